@@ -16,7 +16,7 @@ from rigtally import __version__
 from rigtally.errors import RigtallyError
 
 # command: module that holds it; a module is imported when its command is asked for
-COMMANDS = ("inspect", "fit", "predict", "tally", "rate", "correct", "plan", "starter")
+COMMANDS = ("inspect", "fit", "predict", "tally", "starter")
 
 
 class _Commands(click.Group):
