@@ -37,7 +37,7 @@ def call(capsys: pytest.CaptureFixture[str], *arguments: str | Path) -> tuple[in
 
 
 def test_fit_prints_one_json_document(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
-    """--json: one document on standard output, nothing on standard error, schema and quantities as promised."""
+    """--json: one document on standard output, nothing on standard error, quantities as promised."""
     log = step_log(tmp_path / "log.csv")
     code, out, err = call(capsys, "fit", log, "--input", "p_in", "--output", "p_out", "--json")
     assert (code, err) == (0, "")

@@ -28,6 +28,7 @@ def command(files: tuple[str, ...], **options: Any) -> int:
 
     LOG... are repeats of one test; RIG is the rig file (.toml).
     """
+    rig_file, logs = _sort(files)
     from rigtally.cli.logs import fit_keywords, read_logs, rig_channels
     from rigtally.cli.output import emit
     from rigtally.estimation.fit import fit
@@ -35,7 +36,6 @@ def command(files: tuple[str, ...], **options: Any) -> int:
     from rigtally.physics.rig_file import load_rig
     from rigtally.tallying.tally import tally
 
-    rig_file, logs = _sort(files)
     rig = load_rig(rig_file)
     prediction = predict(rig, monte_carlo=options["monte_carlo"] or 0, seed=options["seed"])
     records = read_logs(logs, options, rig)
