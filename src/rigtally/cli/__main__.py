@@ -1,0 +1,5 @@
+"""python -m rigtally.cli"""
+
+from rigtally.cli.main import main
+
+main()
