@@ -1,7 +1,7 @@
 """Cold start: `rigtally fit` of a 10 000-row log against importing lmfit, pandas and pint alone.
 
 Run: .venv/bin/python benchmarks/import_time.py
-Prints medians of both and their difference, from runs taken in turn; the aim is a difference of at most 0.6 s.
+Prints medians of both and their difference, from runs in turn; the aim: at most 0.6 s between them.
 """
 
 from __future__ import annotations
