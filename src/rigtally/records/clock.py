@@ -1,4 +1,4 @@
-"""The sample clock: from stamps or a stated rate to a record with a clock that can be trusted, or said not to."""
+"""The sample clock: from stamps or a stated rate to a record whose clock is known for what it is."""
 
 from __future__ import annotations
 
@@ -14,14 +14,18 @@ from rigtally.records.stamp_grid import StampGrid, fit_grid
 
 Array = NDArray[np.float64]
 
-# Jitter (standard deviation, share of the interval) up to which the clock is used as uniform. The error of one
-# sample is slope × jitter; a sine at a tenth of the sampling rate then errs by at most 1.3 % of its amplitude.
+# Jitter (standard deviation, share of the interval) up to which the clock is used as uniform. The error of
+# one sample is slope × jitter: for a sine at a tenth of the sampling rate at most 1.3 % of its amplitude.
 UNIFORM_JITTER = 0.02
+# Wander (relative standard deviation of the interval) up to which it is; it goes into u of the interval.
+UNIFORM_WANDER = 1e-3
 # stated rate and stamps may differ by so much
 RATE_TOLERANCE = 0.01
 # the grid may grow by lost rows to this many times the rows that are there
 GRID_GROWTH = 2
 FIRST_ROWS = 8
+# rows lost in a row from which they are a gap
+GAP_ROWS = 10
 
 
 def make_record(
@@ -32,9 +36,8 @@ def make_record(
 ) -> Record:
     """Join channels and clock.
 
-    Lost rows of a uniform clock become rows of NaN, so that the grid stays uniform and nothing is interpolated.
-    Where the clock is not uniform enough the true stamps are kept and `interval` is the typical one only in the
-    faults' texts.
+    Lost rows of a uniform clock become rows of NaN, so that the grid stays uniform and nothing is
+    interpolated. Where the clock is not uniform enough the true stamps are kept.
 
     Parameters
     ----------
@@ -43,8 +46,8 @@ def make_record(
     stamps : (n,) array or None
         Seconds; NaN where a row has none.
     rate : float or None
-        Samples per second as stated. Together with stamps it fixes the interval, and the stamps tell only which
-        rows are lost.
+        Samples per second as stated. Together with stamps it fixes the interval, and the stamps tell
+        only which rows are lost.
     provenance : Provenance
 
     Raises
@@ -57,10 +60,15 @@ def make_record(
     channels = tuple(channels)
     count = _common_count(channels, stamps, where)
     if rate is not None and not (np.isfinite(rate) and rate > 0):
-        raise LogError(f"the rate {rate} Hz is not above 0", where=where, do="state it as 1 kHz", code="bad-rate")
+        raise LogError(
+            f"the rate {rate} Hz is not above 0", where=where, do="state it as 1 kHz", code="bad-rate"
+        )
     if count < 2:
         raise LogError(
-            f"the log has {count} rows", where=where, do="a record needs two samples or more", code="too-short"
+            f"the log has {count} row{'' if count == 1 else 's'}",
+            where=where,
+            do="a record needs two samples or more",
+            code="too-short",
         )
     if stamps is None:
         if rate is None:
@@ -99,31 +107,26 @@ def _stamped(
     if rate is not None:
         _refuse_contradiction(stamps, grid, rate, provenance.file)
     channels, stamps, grid = _without_doubled(channels, stamps, grid, faults)
-    interval, jitter = grid.interval, grid.jitter
-    lost = int(grid.index[-1]) + 1 - stamps.size
-    on_grid = rate is not None or jitter <= UNIFORM_JITTER * interval
-    _say_lost(grid, faults, filled=on_grid and int(grid.index[-1]) + 1 <= GRID_GROWTH * stamps.size + 1000)
-    _say_rounding(grid, faults)
-    _say_jitter(grid, on_grid, rate is not None, faults)
-    if not on_grid or lost > (GRID_GROWTH - 1) * stamps.size + 1000:
-        return Record(
-            channels,
-            start=float(stamps[0]),
-            stamps=stamps,
-            clock_faults=tuple(faults),
-            u_interval=grid.u_interval,
-            jitter=jitter,
-            provenance=provenance,
-        )
-    if lost > 0:
+    places = int(grid.index[-1]) + 1
+    steady = grid.jitter <= UNIFORM_JITTER * grid.interval and grid.wander <= UNIFORM_WANDER
+    distinct = bool(np.all(np.diff(grid.index) >= 1)) and not grid.irregular
+    uniform = (steady or rate is not None) and distinct and places <= GRID_GROWTH * stamps.size + 1000
+    if grid.irregular:
+        _say_irregular(stamps, faults)
+    else:
+        _say_lost(grid, faults, filled=uniform)
+        _say_rounding(grid, faults)
+        _say_scatter(grid, faults, uniform=uniform, stated=rate is not None)
+    if uniform and places > stamps.size:
         channels = tuple(replace(c, samples=_spread(c.samples, grid)) for c in channels)
     return Record(
         channels,
-        start=grid.start,
-        interval=interval,
+        start=grid.start if uniform else float(stamps[0]),
+        interval=grid.interval if uniform else float("nan"),
+        stamps=None if uniform else stamps,
         clock_faults=tuple(faults),
         u_interval=grid.u_interval,
-        jitter=jitter,
+        jitter=grid.jitter,
         provenance=provenance,
     )
 
@@ -135,11 +138,11 @@ def _spread(samples: Array, grid: StampGrid) -> Array:
     return out
 
 
-def _lines(rows: Sequence[int] | Array, provenance: Provenance) -> str:
+def _lines(rows: NDArray[np.int64], provenance: Provenance) -> str:
     """Row numbers as a person counts them: lines of the file where they are known."""
     first = provenance.lines[0] if provenance.lines else 1
     word = "line" if provenance.lines else "row"
-    shown = [str(int(row) + first) for row in list(rows)[:FIRST_ROWS]]
+    shown = [str(int(row) + first) for row in rows[:FIRST_ROWS]]
     more = ", …" if len(rows) > FIRST_ROWS else ""
     return f"{word}{'s' if len(rows) > 1 else ''} {', '.join(shown)}{more}"
 
@@ -161,9 +164,9 @@ def _without_missing_stamps(
     faults.append(
         Fault(
             "stamp-missing",
-            f"{missing.size} rows have no time stamp ({_lines(missing, provenance)}) and are left out",
+            f"{_rows(missing.size)} without a time stamp left out ({_lines(missing, provenance)})",
             int(missing.size),
-            tuple(int(row) for row in missing[:FIRST_ROWS]),
+            _first(missing),
         )
     )
     return tuple(replace(c, samples=c.samples[known]) for c in channels), stamps[known]
@@ -210,17 +213,11 @@ def _refuse_contradiction(stamps: Array, grid: StampGrid, rate: float, where: st
 def _without_doubled(
     channels: tuple[Channel, ...], stamps: Array, grid: StampGrid, faults: list[Fault]
 ) -> tuple[tuple[Channel, ...], Array, StampGrid]:
-    """One row for each place on the grid: equal rows once, contradicting ones as NaN."""
-    again = np.concatenate([[False], np.diff(grid.index) == 0])
+    """One row for each stamp: equal rows once, contradicting ones as NaN."""
+    again = np.concatenate([[False], (np.diff(grid.index) == 0) & (np.diff(stamps) == 0.0)])
     doubled = np.flatnonzero(again)
     if doubled.size == 0:
         return channels, stamps, grid
-    # only true doubles stand at one stamp; near ones are jitter, and both rows are kept with their own stamps
-    if np.any(stamps[doubled] != stamps[doubled - 1]):
-        again = np.concatenate([[False], np.diff(stamps) == 0])
-        doubled = np.flatnonzero(again)
-        if doubled.size == 0:
-            return channels, stamps, grid
     keep = ~again
     place = np.cumsum(keep) - 1
     cleaned = []
@@ -234,12 +231,20 @@ def _without_doubled(
         first[place[doubled[differ]]] = np.nan
         cleaned.append(replace(channel, samples=first))
     unequal = int(contradicting.sum())
-    text = f"{doubled.size} rows repeat the stamp of the row before"
-    text += f"; {unequal} of them contradict it, and both are left out there" if unequal else " and are left out"
-    rows = tuple(int(row) for row in doubled[:FIRST_ROWS])
-    faults.append(Fault("doubled", text, int(doubled.size), rows))
+    text = f"{_rows(doubled.size)} with the stamp of the row before left out"
+    if unequal:
+        text += f"; where the two contradict each other ({unequal}) the first is left out as well"
+    faults.append(Fault("doubled", text, int(doubled.size), _first(doubled)))
     kept_grid = replace(grid, index=grid.index[keep], rest=grid.rest[keep])
     return tuple(cleaned), stamps[keep], kept_grid
+
+
+def _rows(count: int) -> str:
+    return f"{count} row{'' if count == 1 else 's'}"
+
+
+def _first(rows: NDArray[np.int64]) -> tuple[int, ...]:
+    return tuple(int(row) for row in rows[:FIRST_ROWS])
 
 
 def _say_lost(grid: StampGrid, faults: list[Fault], *, filled: bool) -> None:
@@ -251,42 +256,66 @@ def _say_lost(grid: StampGrid, faults: list[Fault], *, filled: bool) -> None:
     longest = int(jumps[at].max() - 1)
     share = missing / (int(grid.index[-1]) + 1)
     how = "they are left out (empty rows), not interpolated" if filled else "the true stamps are used"
+    where = f"in {at.size} places, at most {longest} in a row" if at.size > 1 else "in one place"
     faults.append(
         Fault(
-            "gap" if longest > 1 else "lost-rows",
-            f"{missing} rows are missing ({share:.2g} of the record) in {at.size} places, at most {longest} in a row "
+            "gap" if longest >= GAP_ROWS else "lost-rows",
+            f"{_rows(missing)} missing ({share:.2g} of the record) {where} "
             f"({longest * grid.interval:.4g} s); {how}",
             missing,
-            tuple(int(row) + 1 for row in at[:FIRST_ROWS]),
+            _first(at + 1),
             float(longest * grid.interval),
         )
     )
 
 
 def _say_rounding(grid: StampGrid, faults: list[Fault]) -> None:
-    if grid.quantum >= grid.interval:
+    if grid.coarse:
         faults.append(
             Fault(
                 "coarse-stamps",
                 f"the stamps are printed in steps of {grid.quantum:g} s, no finer than the interval of "
-                f"{grid.interval:.6g} s: the grid is taken as uniform, and a single lost row could not be seen",
+                f"{grid.interval:.6g} s: a single lost row could not be seen",
                 size=grid.quantum,
             )
         )
 
 
-def _say_jitter(grid: StampGrid, on_grid: bool, stated: bool, faults: list[Fault]) -> None:
-    """Jitter acts as noise of slope × jitter: for a sine of f, 2π f σ of its amplitude (rms: the same share)."""
-    share = grid.jitter / grid.interval
-    if share <= 1e-3:
-        return
-    effect = 2.0 * np.pi * 0.1 * share
-    text = (
-        f"the stamps scatter by {share:.2g} of the interval of {grid.interval:.6g} s about a uniform clock; taken as "
-        f"uniform this adds noise of {effect:.2g} of a signal at a tenth of the sampling rate"
+def _say_irregular(stamps: Array, faults: list[Fault]) -> None:
+    low, high = np.quantile(np.diff(stamps), [0.05, 0.95])
+    faults.append(
+        Fault(
+            "irregular",
+            f"the rows come at no steady rate (nine in ten steps are {low:.4g} to {high:.4g} s); the true "
+            "stamps are used (state --rate if the converter has a clock of its own)",
+            size=float(high / low) if low > 0 else float("inf"),
+        )
     )
-    if on_grid:
-        text += "; the stated rate is used all the same" if stated else "; the clock is used as uniform"
+
+
+def _say_scatter(grid: StampGrid, faults: list[Fault], *, uniform: bool, stated: bool) -> None:
+    """Jitter acts as noise of slope × jitter: for a sine of frequency f by 2π f σ of its size."""
+    if uniform:
+        how = "the stated rate is used all the same" if stated else "the clock is used as uniform"
     else:
-        text += "; the true stamps are used (state --rate if the converter has a clock of its own)"
-    faults.append(Fault("jitter", text, size=share))
+        how = "the true stamps are used (state --rate if the converter has a clock of its own)"
+    share = grid.jitter / grid.interval
+    if share > 1e-3 and not grid.coarse:
+        faults.append(
+            Fault(
+                "jitter",
+                f"the stamps scatter by {share:.2g} of the interval of {grid.interval:.6g} s about a uniform "
+                f"clock; read as uniform this adds noise of {2.0 * np.pi * 0.1 * share:.2g} of a signal at a "
+                f"tenth of the sampling rate; {how}",
+                size=share,
+            )
+        )
+    if grid.wander > 1e-6:
+        faults.append(
+            Fault(
+                "wander",
+                f"the clock's interval wanders by {grid.wander:.2g} of itself over the record; "
+                + ("this is carried in u of the interval" if uniform else how),
+                size=grid.wander,
+            )
+        )
