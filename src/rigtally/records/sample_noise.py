@@ -1,0 +1,91 @@
+"""Two numbers that every look at raw samples needs: the noise of one sample, and the smallest step."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+Array = NDArray[np.float64]
+
+# median |x| of a normal variate in standard deviations
+MEDIAN_TO_SIGMA = 1.482602218505602
+PROBE = 100_000
+
+
+def noise_sigma(samples: Array) -> float:
+    """Standard deviation of white noise on a smooth signal, from third differences.
+
+    x_i − 3x_(i+1) + 3x_(i+2) − x_(i+3) has the variance 20 σ² for white noise and none for a parabola; its
+    median modulus does not see the few differences that straddle a step or a spike. Coloured noise reads low.
+
+    Parameters
+    ----------
+    samples : (n,) array
+        NaN where there is none; differences over a NaN are left out.
+
+    Returns
+    -------
+    float
+        In the unit of the samples; NaN with fewer than 8 differences; 0 where most of them vanish.
+    """
+    third = np.diff(samples, 3)
+    third = third[np.isfinite(third)]
+    if third.size < 8:
+        return float("nan")
+    return float(MEDIAN_TO_SIGMA * np.median(np.abs(third)) / np.sqrt(20.0))
+
+
+def smallest_step(written: Array) -> float:
+    """The step of which all samples are multiples (up to one constant), or NaN where there is none.
+
+    First the last printed decimal, then the lattice of a converter behind it.
+
+    Parameters
+    ----------
+    written : (n,) array
+        Samples in the unit in which they were written.
+    """
+    known = written[np.isfinite(written)]
+    if known.size < 2:
+        return float("nan")
+    probe = np.unique(known[:: max(known.size // PROBE, 1)])
+    if probe.size < 2:
+        return float("nan")
+    printed = _last_decimal(probe)
+    lattice = _lattice(probe, printed)
+    return lattice if np.isfinite(lattice) else printed
+
+
+def _last_decimal(values: Array) -> float:
+    """Last decimal place of printed values (between 1000 and 1e-12), or NaN."""
+    size = float(np.abs(values).max())
+    for places in range(-3, 13):
+        quantum = 10.0**-places
+        # sixteen digits are a full double, not a print: 1e-12 of the size is the finest that is believed
+        if quantum < 1e-12 * size:
+            break
+        off = np.abs(values - quantum * np.rint(values / quantum))
+        if float(off.max()) <= 1e-6 * quantum + 4.0 * float(np.spacing(size)):
+            return quantum
+    return float("nan")
+
+
+def _lattice(values: Array, printed: float) -> float:
+    """Step of a converter whose codes were scaled and printed: gaps between values are multiples of it."""
+    gaps = np.diff(values)
+    blur = printed if np.isfinite(printed) else 8.0 * float(np.spacing(np.abs(values).max()))
+    gaps = gaps[gaps > 2.0 * blur]
+    if gaps.size < 3 or gaps.size < 0.5 * (values.size - 1):
+        return float("nan")
+    step = float(gaps.min())
+    near = gaps[gaps < 8.5 * step]
+    for _ in range(3):
+        counts = np.rint(near / step)
+        step = float(np.sum(counts * near) / np.sum(counts * counts))
+    counts = np.rint(gaps / step)
+    off = np.abs(gaps - counts * step)
+    # a random gap passes within ±0.05 of a whole number once in ten
+    allowed = np.maximum(0.05 * step, 1.01 * blur)
+    if np.any(counts < 1) or float(np.mean(off <= allowed)) < 0.98 or allowed > 0.25 * step:
+        return float("nan")
+    return step
