@@ -53,6 +53,9 @@ class Drive:
     """What is imposed on the rig: an input.
 
     `imposes` is as spoken ("pressure", "volume flow", "level", "displacement" …).
+    `at` says that the place was written as `at`: a positive imposed through value then drives that
+    node positive. Written as from and to (`at` false) it goes from the first node through the drive to
+    the second, so that a load that opposes motion goes from the shaft to ground.
     """
 
     name: str
@@ -64,6 +67,7 @@ class Drive:
     medium: str = ""
     unit: str = ""
     line: int = 0
+    at: bool = True
 
 
 @dataclass(frozen=True)
