@@ -1,4 +1,4 @@
-"""What a good practitioner would write with scipy alone: the scripts that the speed benchmark runs beside ours.
+"""What a good practitioner writes with scipy alone: the speed benchmark runs it beside ours.
 
 Both fit K ωn²/(s² + 2ζωn s + ωn²) to a sampled input and output, with a constant offset, from a given good
 start, and return parameters with a white-noise covariance. They have no drift and no free initial state.
