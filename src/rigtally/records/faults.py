@@ -183,8 +183,8 @@ def _find_stuck(channel: Channel, sigma: float) -> list[Fault]:
     longest = int(np.argmax(np.where(long, lengths, 0)))
     value = _with_unit(float(samples[starts[longest]]), channel)
     text = (
-        f"{count} samples in {int(long.sum())} stretches hold one value while the rest is noisy; the longest, "
-        f"{int(lengths[longest])} samples at {value}, from sample {int(starts[longest])}"
+        f"{count} samples in {int(long.sum())} stretches hold one value while the rest is noisy; the "
+        f"longest, {int(lengths[longest])} samples at {value}, from sample {int(starts[longest])}"
     )
     return [Fault("stuck", text, count, _first(starts[long]), float(lengths[longest]))]
 

@@ -113,10 +113,10 @@ def _compare(name: str, events: list[Event]) -> Linearity:
     limits = (float(sizes.min()), float(sizes.max()))
     findings = [text for movement in movements for text in _findings(name, movement, limits)]
     if hysteresis.determined and abs(hysteresis.value) > coverage_factor(0.99, hysteresis.dof) * hysteresis.u:
-        width = f"{hysteresis.value:.3g} ± {hysteresis.expanded():.1g} {hysteresis.unit}".rstrip()
+        width = _pair(hysteresis)
         findings.append(
-            f"{name}: the same input is answered {width} higher after a rise than after a fall (hysteresis or "
-            "dead band)"
+            f"{name}: the same input is answered {width} higher after a rise than after a fall "
+            "(hysteresis or dead band)"
         )
     return Linearity(name, limits, tuple(movements), hysteresis, tuple(findings))
 
@@ -192,17 +192,20 @@ def _findings(name: str, movement: Movement, limits: tuple[float, float]) -> lis
         change = movement.with_size
         share = f" ({100 * change.value / mean:+.2g} %)" if mean else ""
         out.append(
-            f"{name}: the {what} changes by {change.value:.3g} ± {change.expanded():.1g} {change.unit}".rstrip()
+            f"{name}: the {what} changes by {_pair(change)}"
             + f"{share} between steps of {limits[0]:.4g} and {limits[1]:.4g}"
         )
     if movement.direction_matters:
         change = movement.with_direction
         share = f" ({100 * change.value / mean:+.2g} %)" if mean else ""
         out.append(
-            f"{name}: the {what} differs by {change.value:.3g} ± {change.expanded():.1g} {change.unit}".rstrip()
-            + f"{share} between upward and downward steps"
+            f"{name}: the {what} differs by {_pair(change)}" + f"{share} between upward and downward steps"
         )
     return out
+
+
+def _pair(value: Uncertain) -> str:
+    return f"{value.value:.3g} ± {value.expanded():.1g} {value.unit}".rstrip()
 
 
 def _hysteresis(name: str, events: list[Event]) -> Uncertain:

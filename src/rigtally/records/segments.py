@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 from dataclasses import dataclass
 
@@ -93,7 +94,7 @@ def _without_tops(levels: list[tuple[int, int]], count: int) -> list[tuple[int, 
     """Levels without those shorter than half the movement next to them: tops of a swing, bends of a rise."""
     kept = list(levels)
     while len(kept) > 1:
-        before = [kept[0][0], *(b[0] - a[1] for a, b in zip(kept[:-1], kept[1:], strict=True))]
+        before = [kept[0][0], *(b[0] - a[1] for a, b in itertools.pairwise(kept))]
         after = [*before[1:], count - kept[-1][1]]
         share = [(e - b) / max(m, n, 1) for (b, e), m, n in zip(kept, before, after, strict=True)]
         worst = int(np.argmin(share))
@@ -130,7 +131,7 @@ def _flat(
     means: Array, corners: list[int], scatter: float, drift: float, shortest: int
 ) -> list[tuple[int, int]]:
     """Ranges of blocks of the polyline's flat pieces, joined where they touch at one level."""
-    pieces = list(zip(corners[:-1], corners[1:], strict=True))
+    pieces = list(itertools.pairwise(corners))
     lengths = [last - first for first, last in pieces]
     flat = [_stands(means[first:last], scatter, drift) for first, last in pieces]
     levels: list[tuple[int, int]] = []

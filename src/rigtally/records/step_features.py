@@ -294,7 +294,7 @@ class _Wave:
 def _smoothing(sigma: float, count: int) -> int:
     """Length of the moving mean that brings the noise to 0.5 % of the amplitude, at most 1/40 of the
     record."""
-    wanted = int(math.ceil((sigma / 0.005) ** 2))
+    wanted = math.ceil((sigma / 0.005) ** 2)
     return max(1, min(wanted, count // 40) | 1)
 
 
