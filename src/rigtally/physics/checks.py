@@ -79,7 +79,9 @@ def check_structure(rig: Rig, lowered: Sequence[Lowered]) -> None:
             do="connect these nodes to ground through an element",
             code="cut-set-of-drives",
         )
-    touching = [i.element.name for i in lowered if any(p.first in loose or p.second in loose for p in i.ports)]
+    touching = [
+        i.element.name for i in lowered if any(p.first in loose or p.second in loose for p in i.ports)
+    ]
     raise RigError(
         f"{_named(loose, 'node')} of {_named(dict.fromkeys(touching), 'element')} "
         f"{'floats' if len(loose) == 1 else 'float'}: nothing connects to ground",

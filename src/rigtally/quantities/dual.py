@@ -15,6 +15,7 @@ class Dual:
     """value + Σ (∂/∂name) d name. Immutable; arithmetic with plain numbers and Duals."""
 
     __slots__ = ("partials", "value")
+    __array_ufunc__ = None  # numpy numbers and arrays leave the arithmetic to this class
 
     def __init__(self, value: Any, partials: Mapping[str, Any] | None = None) -> None:
         self.value = value
@@ -35,10 +36,10 @@ class Dual:
         return self.scaled(-self.value, -1.0)
 
     def __sub__(self, other: Any) -> Dual:
-        return self + (-other)
+        return self + -1.0 * other
 
     def __rsub__(self, other: Any) -> Dual:
-        return (-self) + other
+        return -self + other
 
     def __mul__(self, other: Any) -> Dual:
         if isinstance(other, Dual):

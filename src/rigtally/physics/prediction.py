@@ -1,0 +1,174 @@
+"""The door of the physics room: from a checked rig to a prediction with uncertainty."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rigtally.forms.transfer_matrix import TransferMatrix
+from rigtally.physics.derived import derived_quantities
+from rigtally.physics.limits import line_limits
+from rigtally.physics.model import Model, Solved
+from rigtally.physics.prediction_result import Finding, Prediction
+from rigtally.physics.rig import Rig
+from rigtally.physics.tolerance_draws import monte_carlo_parameters
+from rigtally.quantities.uncertain import Uncertain
+
+Array = NDArray[np.float64]
+Progress = Callable[[int, int], None]
+
+
+def predict(rig: Rig, *, monte_carlo: int = 0, seed: int = 0, progress: Progress | None = None) -> Prediction:
+    """Transfer matrix, named parameters and their uncertainty from a rig's elements.
+
+    Parameters
+    ----------
+    monte_carlo : int
+        At most so many draws of the tolerances (JCGM 101:2008, adaptive stop); 0: first order only.
+    seed : int
+        Of the draws.
+    progress : callable (draws done, draws at most), optional
+
+    Raises
+    ------
+    RigError
+        The network has no unique or no proper answer; the elements are named.
+    """
+    model = Model(rig)
+    solved = model.solve()
+    form = model.form
+    inputs = model.values.inputs
+    u = np.array([x.u for x in inputs])
+    covariance = (solved.sensitivity * u**2) @ solved.sensitivity.T
+    units = form.units(model.network.output_units, model.network.input_units)
+    parameters = {
+        name: Uncertain(float(x), float(s), unit)
+        for name, x, s, unit in zip(
+            form.names, solved.theta, _spread(solved.sensitivity, u), units, strict=True
+        )
+    }
+    warnings = _warnings(model, solved)
+    if monte_carlo:
+        found, more = monte_carlo_parameters(model, parameters, solved, monte_carlo, seed, progress)
+        parameters, warnings = found, [*warnings, *more]
+    dead = np.zeros((len(form.outputs), len(form.inputs)))
+    provenance: dict[str, Any] = {
+        "file": rig.file,
+        "sha256": rig.sha256,
+        "seed": seed,
+        "poles": tuple(complex(p) for p in solved.poles),
+        "u_denominator": _spread(solved.by_denominator.T, u),
+        "u_numerators": _spread(np.moveaxis(solved.by_numerators, 0, -1), u),
+        **({"line_frequency": solved.omega} if math.isfinite(solved.omega) else {}),
+    }
+    return Prediction(
+        title=rig.title,
+        form=form,
+        names=form.names,
+        parameters=parameters,
+        covariance=covariance,
+        transfer_function=TransferMatrix(
+            solved.numerators, solved.denominator, dead, form.outputs, form.inputs
+        ),
+        derived=derived_quantities(model, solved, u),
+        output_units=model.network.output_units,
+        input_units=model.network.input_units,
+        input_names=model.values.input_names,
+        inputs=inputs,
+        sensitivity=solved.sensitivity,
+        evaluate=model.evaluate,
+        budget=_budget(model, solved.sensitivity, u),
+        limits=line_limits(model),
+        warnings=tuple(warnings),
+        removed_poles=model.reduction.removed,
+        provenance=provenance,
+    )
+
+
+def _spread(sensitivity: Array, u: Array) -> Array:
+    """Standard uncertainty of independent inputs: √Σ (c u)² over the last axis.
+
+    A value taken as exact adds nothing, whatever its derivative.
+    """
+    moving = u > 0
+    out: Array = np.sqrt(np.sum((sensitivity[..., moving] * u[moving]) ** 2, axis=-1))
+    return out
+
+
+def _budget(model: Model, sensitivity: Array, u: Array) -> dict[str, list[tuple[str, str, float]]]:
+    """Share of each value in the variance of each parameter, largest first; they sum to 1."""
+    out: dict[str, list[tuple[str, str, float]]] = {}
+    for name, row in zip(model.form.names, sensitivity, strict=True):
+        parts = np.where(u > 0, row * u, 0.0) ** 2
+        total = parts.sum()
+        if not total > 0 or not math.isfinite(total):
+            out[name] = []
+            continue
+        shares = [
+            (*model.values.label(value), float(part / total))
+            for value, part in zip(model.values.input_names, parts, strict=True)
+            if part > 1e-12 * total
+        ]
+        out[name] = sorted(shares, key=lambda item: -item[2])
+    return out
+
+
+def _warnings(model: Model, solved: Solved) -> list[Finding]:
+    out: list[Finding] = []
+    exact = [n for n, x in zip(model.values.input_names, model.values.inputs, strict=True) if x.u == 0.0]
+    exact = [n for n in exact if n != "rig.gravity"]
+    if exact:
+        out.append(
+            Finding(
+                "taken-as-exact", "no tolerance is stated, taken as exact: " + ", ".join(exact), len(exact)
+            )
+        )
+    for pole in model.reduction.removed:
+        text = f"a pole at {_written(pole)} is in no entry and was removed"
+        if pole.real > 0:
+            out.append(Finding("removed-unstable-pole", text + "; it is unstable", pole.real))
+        else:
+            out.append(Finding("removed-pole", text, pole.real))
+    if model.reduction.by_chance:
+        out.append(
+            Finding(
+                "cancelled-by-chance",
+                f"{model.reduction.by_chance} pole(s) cancel at the nominal values only, not by structure: "
+                "with the tolerances they are weakly there",
+                model.reduction.by_chance,
+            )
+        )
+    unstable = [p for p in solved.poles if p.real > 1e-12 * abs(p)]
+    if unstable:
+        out.append(
+            Finding(
+                "unstable", f"the rig is unstable: a pole at {_written(unstable[0])}", float(unstable[0].real)
+            )
+        )
+    if model.form.integrators:
+        out.append(
+            Finding(
+                "integrates",
+                f"the rig integrates ({model.form.integrators} pole(s) at zero): a constant input gives a ramp",
+                model.form.integrators,
+            )
+        )
+    if not np.all(np.isfinite(solved.sensitivity)):
+        out.append(
+            Finding(
+                "coincident-poles",
+                "poles coincide, where the parameters have no derivative: their first-order uncertainty is "
+                "not determined",
+            )
+        )
+    return out
+
+
+def _written(pole: complex) -> str:
+    if pole.imag == 0:
+        return f"{pole.real:.4g} 1/s"
+    return f"{pole.real:.4g} ± {abs(pole.imag):.4g}j 1/s"
