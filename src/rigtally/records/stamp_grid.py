@@ -187,11 +187,18 @@ def _solve(stamps: Array, index: Whole, quantum: float, interval: float | None) 
     rest = elapsed - start - interval * index
     deviation = float(np.sqrt(np.sum(rest**2) / max(stamps.size - 2, 1)))
     u_interval = 0.0 if stated else float(deviation / np.sqrt(spread) / interval)
+    if not stated:
+        # rounding follows the clock in a slow saw-tooth, which many rows do not average out: half a digit at the
+        # two ends of the record tilts it by up to q over its length
+        span = interval * max(int(index[-1]), 1)
+        u_interval = float(
+            np.hypot(u_interval, min(quantum, deviation * np.sqrt(12.0)) / np.sqrt(12.0) / span)
+        )
     # round-off of the stamps alone is no scatter
     fuzz = 4 * float(np.spacing(np.abs(stamps).max()))
     if deviation <= fuzz:
         start, rest, u_interval = 0.0, np.zeros_like(rest), 0.0
-    if not stated and u_interval < 1e-8:
+    if not stated and u_interval < 1e-5:
         interval = _tidy(interval, interval * (u_interval + 4e-15) + fuzz / max(int(index[-1]), 1))
     return StampGrid(float(stamps[0]) + start, interval, index, rest, quantum, u_interval)
 
