@@ -1,0 +1,394 @@
+"""The rows of a text log in bulk, every line counted and every cell accounted for."""
+
+from __future__ import annotations
+
+import io
+import re
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rigtally.errors import LogError
+from rigtally.records.csv_cells import HIGH_COMMAS, MISSING, SPACES, kind, number_pattern, split
+from rigtally.records.csv_layout import Layout
+from rigtally.records.csv_lines import Lines
+from rigtally.records.record import Fault
+
+Array = NDArray[np.float64]
+Bool = NDArray[np.bool_]
+
+_BLOCK = 1 << 22
+# Unreadable cells beyond this share of a column are a misunderstanding, not damage.
+DAMAGE = 0.02
+_SUMMARY = re.compile(
+    r"\W*(mean|average|avg|min|max|minimum|maximum|total|sum|std|stdev|rms|median|end|count|mittel\w*)\b",
+    re.IGNORECASE,
+)
+_SPELLINGS = sorted(
+    {form for word in MISSING for form in (word, word.upper(), word.capitalize())} | {"NaN", "#N/A"}
+)
+
+
+class Disagreement(Exception):
+    """Cells that another reading of the marks would make numbers: the layout must be looked at again."""
+
+    def __init__(self, rows: Sequence[int], cell: str, column: int) -> None:
+        super().__init__(cell)
+        self.rows = tuple(rows)
+        self.cell = cell
+        self.column = column
+
+
+@dataclass(frozen=True)
+class Table:
+    """Columns as read: numbers, or texts of stamps; and what was found on the way.
+
+    `lines` is the first and last line of rows (counted from 1).
+    """
+
+    numbers: dict[int, Array]
+    texts: dict[int, Any]
+    faults: dict[int, tuple[Fault, ...]]
+    lines: tuple[int, int]
+    footer: tuple[str, ...] = ()
+    left_out: int = 0
+
+
+def read_table(
+    lines: Lines,
+    layout: Layout,
+    wanted: Sequence[int],
+    missing: Sequence[str] = (),
+    progress: Callable[[int, int], None] | None = None,
+    *,
+    weighed: bool = False,
+) -> Table:
+    """Read the wanted columns of all rows.
+
+    `weighed` says that the layout was decided with these rows' own evidence.
+
+    Raises
+    ------
+    LogError
+        codes "ragged", "unreadable-cell", "quotes", "two-tables".
+    Disagreement
+        Where cells speak for another reading of the marks.
+    """
+    rows, last, footer = _rows(lines, layout)
+    numbers = [place for place in wanted if layout.kinds[place] in ("number", "missing")]
+    texts = [place for place in wanted if layout.kinds[place] in ("stamp", "date", "clock")]
+    body = _Body(lines, layout, rows, last, [*_SPELLINGS, *missing], progress)
+    bad: dict[int, list[tuple[int, str]]] = {}
+    if layout.marks.thousands:
+        bad = body.unreadable(numbers, weighed)
+        frame = body.frame(numbers, texts, bad)
+    else:
+        try:
+            frame = body.frame(numbers, texts, bad)
+        except (ValueError, OverflowError):
+            bad = body.unreadable(numbers, weighed)
+            frame = body.frame(numbers, texts, bad)
+    if len(frame) != rows.size:
+        raise LogError(
+            f"{rows.size} lines gave {len(frame)} rows",
+            where=lines.source.name,
+            do="look for quotes that are not closed",
+            code="quotes",
+        )
+    out: dict[int, Array] = {}
+    faults: dict[int, tuple[Fault, ...]] = {}
+    for place in numbers:
+        values = frame[place].to_numpy(dtype=float, copy=False)
+        out[place], faults[place] = _accounted(values, bad.get(place, []))
+    return Table(
+        out,
+        {place: frame[place] for place in texts},
+        faults,
+        (int(rows[0]) + 1, int(rows[-1]) + 1),
+        footer,
+        int(last - layout.first - rows.size),
+    )
+
+
+def _accounted(values: Array, bad: list[tuple[int, str]]) -> tuple[Array, tuple[Fault, ...]]:
+    """Name what is missing, what was no number, and what stands for an overload."""
+    found: list[Fault] = []
+    if bad:
+        text = ", ".join(f"{cell!r}" for _, cell in bad[:3])
+        rows = tuple(row for row, _ in bad[:8])
+        found.append(
+            Fault("unreadable", f"{len(bad)} cells are no numbers and are left out: {text}", len(bad), rows)
+        )
+    # ±9.9E37 and 9.91E37: infinity and not-a-number as instruments send them (IEEE Std 488.2)
+    with np.errstate(invalid="ignore"):
+        beyond = np.flatnonzero(np.abs(values) >= 9.9e37)
+    if beyond.size:
+        values = values.copy()
+        values[beyond] = np.nan
+        found.append(
+            Fault(
+                "overload",
+                f"{beyond.size} cells stand for an overload and are left out",
+                int(beyond.size),
+                tuple(int(row) for row in beyond[:8]),
+            )
+        )
+    gaps = np.flatnonzero(np.isnan(values))
+    lost = int(gaps.size - beyond.size - len(bad))
+    if lost > 0:
+        found.append(
+            Fault("missing", f"{lost} cells hold no value", lost, tuple(int(row) for row in gaps[:8]))
+        )
+    return values, tuple(found)
+
+
+def _rows(lines: Lines, layout: Layout) -> tuple[NDArray[np.int64], int, tuple[str, ...]]:
+    """Line numbers of the rows; the line after the last; the footer's lines."""
+    counts = _cell_counts(lines, layout)
+    good = counts == layout.count
+    if layout.count == 1:
+        good &= lines.ends[layout.first :] > lines.begins[layout.first :]
+    last = int(np.flatnonzero(good)[-1]) + 1 if good.any() else 0
+    while last > 1 and _closes(lines[layout.first + last - 1]):
+        last -= 1
+        while last > 1 and not good[last - 1]:
+            last -= 1
+    footer = list(range(layout.first + last, min(len(lines), layout.first + last + 60)))
+    rest = len(lines) - layout.first - last
+    _refuse_rows_below(lines, layout, footer, rest)
+    wrong = np.flatnonzero(~good[:last])
+    # blank and comment lines between the rows are no rows
+    dropped = 0
+    for place in wrong[:20_000]:
+        row = layout.first + int(place)
+        if lines.comment(row) or (layout.count > 1 and lines.blank(row)):
+            dropped += 1
+            continue
+        if layout.count == 1 and lines.blank(row):
+            good[place] = True
+            dropped += 1
+            continue
+        raise LogError(
+            f"the line has {int(counts[place])} cells, the others have {layout.count}: {lines[row][:60]!r}",
+            where=lines.where(row),
+            do="mend the line or take it out",
+            code="ragged",
+        )
+    if dropped < wrong.size:
+        raise LogError(
+            f"{wrong.size} lines have not {layout.count} cells",
+            where=lines.source.name,
+            do="state --separator",
+            code="ragged",
+        )
+    rows = np.flatnonzero(good[:last]) + layout.first
+    texts = tuple(lines[row] for row in footer if not lines.blank(row))
+    return rows, layout.first + last, texts
+
+
+def _closes(line: str) -> bool:
+    return bool(_SUMMARY.match(line))
+
+
+def _refuse_rows_below(lines: Lines, layout: Layout, footer: Sequence[int], rest: int) -> None:
+    """What stands below the rows must not be rows cut short or run together."""
+    for row in footer:
+        cells = split(lines[row], layout.separator or ",")
+        kinds = [kind(cell) for cell in cells if cell]
+        readable = sum(each in ("number", "stamp", "date", "clock") for each in kinds)
+        if lines.comment(row) or not kinds or kinds[0] == "words":
+            continue
+        if 2 * readable >= len(kinds):
+            raise LogError(
+                f"the line has {len(cells)} cells, the others have {layout.count}: {lines[row][:60]!r}",
+                where=lines.where(row),
+                do="mend the line or take it out",
+                code="ragged",
+            )
+    if rest > 60 and rest > 0.2 * (len(lines) - layout.first):
+        raise LogError(
+            f"{rest} lines below the rows are read as no rows",
+            where=lines.where(footer[0]),
+            do="state --separator, or cut the file into one table each",
+            code="two-tables",
+        )
+
+
+def _cell_counts(lines: Lines, layout: Layout) -> NDArray[np.int64]:
+    """(lines,) how many cells each line from the first row on has."""
+    begins, ends = lines.begins[layout.first :], lines.ends[layout.first :]
+    if layout.count == 1 and layout.separator != " ":
+        return np.ones(begins.size, dtype=np.int64)
+    counts = np.empty(begins.size, dtype=np.int64)
+    row = 0
+    while row < begins.size:
+        stop = int(np.searchsorted(ends, begins[row] + _BLOCK, side="left"))
+        stop = max(stop, row + 1)
+        block = lines.signs[int(begins[row]) : int(ends[stop - 1])]
+        local = begins[row:stop] - begins[row]
+        marks = _separators(block, layout.separator, local, lines, layout.first + row)
+        edges = np.searchsorted(marks, np.append(local, block.size + 1))
+        counts[row:stop] = np.diff(edges) + (0 if layout.separator == " " else 1)
+        row = stop
+    return counts
+
+
+def _separators(
+    block: NDArray[np.uint8], separator: str, begins: NDArray[np.int64], lines: Lines, first: int
+) -> NDArray[np.int64]:
+    """Positions of the separators outside quotes; with blanks, of the beginnings of the cells."""
+    quotes = np.flatnonzero(block == 34)
+    if separator == " ":
+        space = (block == 32) | (block == 9) | (block == 10) | (block == 13)
+        before = np.empty_like(space)
+        before[0] = True
+        before[1:] = space[:-1]
+        marks = np.flatnonzero(~space & before)
+    else:
+        marks = np.flatnonzero(block == ord(separator))
+    if quotes.size:
+        odd = np.flatnonzero(np.diff(np.searchsorted(quotes, np.append(begins, block.size))) % 2)
+        if odd.size:
+            raise LogError(
+                "a quote is not closed on its line",
+                where=lines.where(first + int(odd[0])),
+                do="close the quote",
+                code="quotes",
+            )
+        marks = marks[np.searchsorted(quotes, marks) % 2 == 0]
+    return marks
+
+
+class _Body:
+    """The rows' bytes, and how the bulk reader is told to read them."""
+
+    def __init__(
+        self,
+        lines: Lines,
+        layout: Layout,
+        rows: NDArray[np.int64],
+        last: int,
+        missing: Sequence[str],
+        progress: Callable[[int, int], None] | None,
+    ) -> None:
+        self.layout = layout
+        self.rows = rows
+        self.lines = lines
+        self.missing = list(dict.fromkeys(missing))
+        self.progress = progress
+        end = int(lines.ends[rows[-1]])
+        text = lines.source.text[int(lines.begins[layout.first]) : end]
+        if rows.size != int(rows[-1]) - layout.first + 1:
+            view = lines.source.text
+            text = memoryview(
+                b"\n".join(bytes(view[int(lines.begins[row]) : int(lines.ends[row])]) for row in rows)
+            )
+        marks = layout.marks
+        if marks.thousands in (" ", "'"):
+            plain = bytes(text)
+            for mark in {" ": SPACES[1:], "'": HIGH_COMMAS[1:]}[marks.thousands]:
+                plain = plain.replace(mark.encode(), marks.thousands.encode())
+            text = memoryview(plain)
+        self.text = text
+
+    def _read(self, columns: Sequence[int], dtype: Any, missing: Any, **more: Any) -> Any:
+        import pandas as pd
+
+        separator = self.layout.separator
+        stream = io.BufferedReader(_Stream(self.text, self.progress), 1 << 18)
+        return pd.read_csv(
+            stream,
+            sep=r"\s+" if separator == " " else (separator if self.layout.count > 1 else "\x01"),
+            header=None,
+            names=list(range(self.layout.count)),
+            usecols=sorted(columns),
+            dtype=dtype,
+            na_values=missing,
+            keep_default_na=False,
+            skipinitialspace=True,
+            skip_blank_lines=False,
+            index_col=False,
+            engine="c",
+            encoding="utf-8",
+            **more,
+        )
+
+    def frame(
+        self, numbers: Sequence[int], texts: Sequence[int], bad: dict[int, list[tuple[int, str]]]
+    ) -> Any:
+        """Numbers as float64 (ValueError where a cell is none), stamps as texts."""
+        dtype: dict[int, Any] = dict.fromkeys(numbers, np.float64) | dict.fromkeys(texts, str)
+        missing: Any = self.missing
+        if bad:
+            missing = {
+                place: self.missing + sorted({cell for _, cell in bad.get(place, [])})
+                for place in (*numbers, *texts)
+            }
+        more = {"decimal": self.layout.marks.decimal}
+        if self.layout.marks.thousands:
+            more["thousands"] = self.layout.marks.thousands
+        return self._read([*numbers, *texts], dtype, missing, **more)
+
+    def unreadable(self, numbers: Sequence[int], weighed: bool) -> dict[int, list[tuple[int, str]]]:
+        """(row, text) of the cells of each number column that are no numbers under the layout.
+
+        Raises
+        ------
+        Disagreement, LogError
+        """
+        out: dict[int, list[tuple[int, str]]] = {}
+        pattern = number_pattern(self.layout.marks)
+        for place in numbers:
+            cells = self._read([place], str, [])[place].to_numpy(dtype=object)
+            distinct = {}
+            found = []
+            for row, cell in enumerate(cells):
+                if cell not in distinct:
+                    bare = str(cell).strip()
+                    distinct[cell] = bool(pattern.fullmatch(bare)) or bare.lower() in MISSING
+                    distinct[cell] |= bare in self.missing or kind(bare) == "missing"
+                if not distinct[cell]:
+                    found.append((row, str(cell)))
+            if found:
+                self._judge(place, found, cells.size, weighed)
+                out[place] = found
+        return out
+
+    def _judge(self, place: int, found: list[tuple[int, str]], count: int, weighed: bool) -> None:
+        """A few damaged cells are left out and named; cells of another habit stop the reading."""
+        other = [(row, cell) for row, cell in found if kind(cell.strip()) in ("number", "date")]
+        if other and not weighed:
+            raise Disagreement([int(self.rows[row]) for row, _ in other[:200]], other[0][1], place)
+        words = sum(kind(cell.strip()) == "words" for _, cell in found)
+        if len(found) - words > max(3, DAMAGE * count) or len(found) > max(3, 0.5 * count):
+            row, cell = found[0]
+            raise LogError(
+                f"{len(found)} cells of the column are no numbers, such as {cell!r}",
+                where=f"{self.lines.where(int(self.rows[row]))}, column {place + 1}",
+                do="take the text out, or name the channels to read",
+                code="unreadable-cell",
+            )
+
+
+class _Stream(io.RawIOBase):
+    """Reads from memory without a copy and tells how far it is."""
+
+    def __init__(self, text: memoryview, progress: Callable[[int, int], None] | None) -> None:
+        super().__init__()
+        self.text = text
+        self.at = 0
+        self.progress = progress
+
+    def readable(self) -> bool:
+        return True
+
+    def readinto(self, buffer: Any) -> int:
+        piece = self.text[self.at : self.at + len(buffer)]
+        buffer[: len(piece)] = piece
+        self.at += len(piece)
+        if self.progress is not None:
+            self.progress(self.at, len(self.text))
+        return len(piece)
