@@ -14,12 +14,14 @@ no spread of element values can spoil.
 
 from __future__ import annotations
 
+import random
 from collections.abc import Iterable
 from dataclasses import dataclass
 
 from rigtally.errors import RigError
-from rigtally.physics.network import MASK, Network, Polynomial, add
+from rigtally.physics.network import FIELD, MASK, Network, Polynomial, add
 
+PRIME = (1 << 61) - 1
 PRODUCT_LIMIT = 400_000  # multiplications of terms after which a network counts as large
 
 
@@ -49,6 +51,7 @@ def expand(network: Network, limit: int = PRODUCT_LIMIT) -> Expansion:
     """
     rows, outputs, owners = eliminate(network)
     size = len(network.columns)
+    _check_rank(network, rows, owners, size)
     rows, outputs, owners = relevant(rows, outputs, owners, size)
     used = sorted({c for row in rows for c in row if c < size})
     if len(used) != len(rows):
@@ -131,6 +134,55 @@ def relevant(
     columns = {c for k in keep for c in rows[k]}
     trimmed = [{c: p for c, p in row.items() if c >= size or c in columns} for row in outputs]
     return [rows[k] for k in keep], trimmed, [owners[k] for k in keep]
+
+
+def _check_rank(network: Network, rows: list[Row], owners: list[str], size: int) -> None:
+    """Refuse equations that leave a variable free, or contradict each other, whatever the values.
+
+    Gauss's elimination modulo a prime, at a random s and random symbols.
+    """
+    draw = random.Random(4099)
+    at = [draw.randrange(1, PRIME) for _ in range(len(network.symbols) + 1)]
+    left = [{c: v for c, p in row.items() if c < size and (v := modular_value(p, at))} for row in rows]
+    columns = {c for row in left for c in row}
+    bad: list[str] = []
+    order = sorted(range(len(left)), key=lambda k: len(left[k]))
+    pivots: dict[int, dict[int, int]] = {}
+    for k in order:
+        row = left[k]
+        while row:
+            c = min(row)
+            if c not in pivots:
+                inverse = pow(row[c], PRIME - 2, PRIME)
+                pivots[c] = {m: v * inverse % PRIME for m, v in row.items()}
+                break
+            factor = row[c]
+            for m, v in pivots[c].items():
+                total = (row.get(m, 0) - factor * v) % PRIME
+                if total:
+                    row[m] = total
+                else:
+                    row.pop(m, None)
+        else:
+            bad.append(owners[k])
+    if bad or len(pivots) < len(columns):
+        loose = [network.columns[c] for c in sorted(columns - set(pivots))]
+        raise _singular(network, bad or owners, loose)
+
+
+def modular_value(poly: Polynomial, at: list[int]) -> int:
+    """A polynomial modulo the prime; at[0] is s, at[k + 1] is symbol k."""
+    total = 0
+    for key, number in poly.items():
+        value = number % PRIME
+        place = 0
+        while key:
+            if key & MASK:
+                value = value * pow(at[place], key & MASK, PRIME) % PRIME
+            key >>= FIELD
+            place += 1
+        total += value
+    return total % PRIME
 
 
 def _row_order(rows: list[Row], size: int) -> list[int]:
@@ -248,12 +300,11 @@ def s_power(key: int) -> int:
     return key & MASK
 
 
-def _singular(network: Network, owners: Iterable[str]) -> RigError:
-    names = list(dict.fromkeys(owners))
+def _singular(network: Network, owners: Iterable[str], loose: Iterable[str] = ()) -> RigError:
+    names = ", ".join(repr(name) for name in dict.fromkeys(owners))
+    free = "; free: " + ", ".join(loose) if loose else ""
     return RigError(
-        "the elements do not determine every variable: "
-        + ", ".join(repr(name) for name in names)
-        + " leave one free or contradict each other",
+        f"the elements do not determine every variable: see {names}{free}",
         where=network.rig.file,
         do="look for couplers that are tied to each other or to imposed values without an element between",
         code="singular-network",

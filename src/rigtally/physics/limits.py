@@ -23,8 +23,8 @@ def line_limits(model: Model) -> tuple[Finding, ...]:
             Finding(
                 "womersley-number",
                 f"{line.name}: Womersley number {alpha:.3g} at {model.omega:.4g} rad/s; over 0.5 to 2 times "
-                f"that frequency its resistance spreads by ±{100 * friction.half_width:.2g} % and its inertance by "
-                f"±{100 * friction.half_width * abs(friction.inertance_slope):.2g} % (carried as the "
+                f"that frequency its resistance spreads by ±{100 * friction.half_width:.2g} % and its "
+                f"inertance by ±{100 * friction.half_width * abs(friction.inertance_slope):.2g} % (carried as the "
                 "line's friction model)",
                 alpha,
             )

@@ -142,6 +142,11 @@ def _warnings(model: Model, solved: Solved) -> list[Finding]:
                 model.reduction.by_chance,
             )
         )
+    idle = [d.name for j, d in enumerate(model.rig.drives) if not any(row[j] for row in model.form.powers)]
+    if idle:
+        out.append(
+            Finding("idle-drive", "no reading is moved by drive " + ", ".join(map(repr, idle)), len(idle))
+        )
     unstable = [p for p in solved.poles if p.real > 1e-12 * abs(p)]
     if unstable:
         out.append(
@@ -153,7 +158,7 @@ def _warnings(model: Model, solved: Solved) -> list[Finding]:
         out.append(
             Finding(
                 "integrates",
-                f"the rig integrates ({model.form.integrators} pole(s) at zero): a constant input gives a ramp",
+                f"the rig integrates ({model.form.integrators} pole(s) at zero): constant in, ramp out",
                 model.form.integrators,
             )
         )

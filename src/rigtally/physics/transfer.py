@@ -16,11 +16,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigtally.errors import RigError
-from rigtally.physics.expansion import Expansion, s_power
+from rigtally.physics.expansion import PRIME, Expansion, s_power
 from rigtally.physics.network import FIELD, MASK, Network, Polynomial
 
 Array = NDArray[np.float64]
-PRIME = (1 << 61) - 1
 
 
 @dataclass(frozen=True)
