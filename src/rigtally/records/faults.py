@@ -245,7 +245,7 @@ def _find_coarse_steps(channel: Channel, sigma: float, extent: float) -> list[Fa
     if not math.isfinite(step) or not math.isfinite(sigma):
         return []
     noise = math.sqrt(max(sigma * sigma - step * step / 12.0, 0.0))
-    if step <= 1.5 * noise or _few_values(channel.samples):
+    if step <= 1.5 * noise or _few_values(channel.samples) or not _staircase(channel.samples):
         return []
     against = f"{step / noise:.2g} times the noise" if noise > 0.1 * step else "hiding the noise"
     text = (
@@ -253,6 +253,13 @@ def _find_coarse_steps(channel: Channel, sigma: float, extent: float) -> list[Fa
         f"{against}"
     )
     return [Fault("coarse-steps", text, size=step / noise if noise > 0.1 * step else float("nan"))]
+
+
+def _staircase(samples: Array) -> bool:
+    """Whether neighbours share values while the channel moves: its two longest rests are left out."""
+    _, lengths = equal_runs(samples)
+    rests = np.sort(lengths)[-2:].sum() if lengths.size > 4 else 0
+    return bool(samples.size - rests >= 1.3 * max(lengths.size - 2, 1))
 
 
 def _few_values(samples: Array) -> bool:

@@ -52,8 +52,11 @@ def smallest_step(written: Array) -> float:
     if probe.size < 2:
         return float("nan")
     printed = _last_decimal(probe)
-    lattice = _lattice(probe, printed)
-    return lattice if np.isfinite(lattice) else printed
+    for blur in (8.0 * float(np.spacing(np.abs(probe).max())), printed):
+        lattice = _lattice(probe, blur) if np.isfinite(blur) else float("nan")
+        if np.isfinite(lattice):
+            return lattice
+    return printed
 
 
 def _last_decimal(values: Array) -> float:
@@ -70,10 +73,12 @@ def _last_decimal(values: Array) -> float:
     return float("nan")
 
 
-def _lattice(values: Array, printed: float) -> float:
-    """Step of a converter whose codes were scaled and printed: gaps between values are multiples of it."""
+def _lattice(values: Array, blur: float) -> float:
+    """Step of a converter whose codes were scaled and printed: gaps between values are multiples of it.
+
+    `blur` is how far a printed value may stand off its code.
+    """
     gaps = np.diff(values)
-    blur = printed if np.isfinite(printed) else 8.0 * float(np.spacing(np.abs(values).max()))
     gaps = gaps[gaps > 2.0 * blur]
     if gaps.size < 3 or gaps.size < 0.5 * (values.size - 1):
         return float("nan")
@@ -85,7 +90,7 @@ def _lattice(values: Array, printed: float) -> float:
     counts = np.rint(gaps / step)
     off = np.abs(gaps - counts * step)
     # a random gap passes within ±0.05 of a whole number once in ten
-    allowed = np.maximum(0.05 * step, 1.01 * blur)
+    allowed = max(0.05 * step, 1.01 * blur)
     if np.any(counts < 1) or float(np.mean(off <= allowed)) < 0.98 or allowed > 0.25 * step:
         return float("nan")
     return step

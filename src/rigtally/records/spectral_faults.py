@@ -48,7 +48,8 @@ def find_hum(samples: Array, interval: float, unit: str, false_alarm: float) -> 
         floor = max(float(np.median(power[side])) for side in sides if side.size) / math.log(2.0)
         bins = inside.stop - inside.start
         limit = math.log(2.0 * len(MAINS) * bins / false_alarm)
-        if power[peak] <= limit * floor or float(power[near].max()) > 0.2 * float(power[peak]):
+        peer = max(0.2 * float(power[peak]), math.log(near.size / false_alarm) * floor)
+        if power[peak] <= limit * floor or float(power[near].max()) > peer:
             continue
         amplitude = 2.0 * math.sqrt(float(power[peak])) / float(window.sum())
         if amplitude > 0.3 * math.sqrt(2.0) * float(np.std(x)):

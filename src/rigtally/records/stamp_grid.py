@@ -188,8 +188,8 @@ def _solve(stamps: Array, index: Whole, quantum: float, interval: float | None) 
     deviation = float(np.sqrt(np.sum(rest**2) / max(stamps.size - 2, 1)))
     u_interval = 0.0 if stated else float(deviation / np.sqrt(spread) / interval)
     if not stated:
-        # rounding follows the clock in a slow saw-tooth, which many rows do not average out: half a digit at the
-        # two ends of the record tilts it by up to q over its length
+        # rounding follows the clock in a slow saw-tooth, which many rows do not average out: half a digit at
+        # the two ends of the record tilts it by up to q over its length
         span = interval * max(int(index[-1]), 1)
         u_interval = float(
             np.hypot(u_interval, min(quantum, deviation * np.sqrt(12.0)) / np.sqrt(12.0) / span)
