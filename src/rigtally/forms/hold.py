@@ -1,0 +1,148 @@
+"""What an input does between its samples, followed exactly.
+
+With the companion matrix of a denominator A, the state x of the first chain holds s^k/A u (k = 0 … n-1), and a
+second chain z, driven by x[0], holds s^k/A² u: all that a transfer function with the denominator A, and its
+derivative by A's coefficients, is made of.
+
+Source: block exponentials of Van Loan, IEEE Transactions on Automatic Control 23 (1978) 395 (from memory).
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.linalg import expm
+
+Array = NDArray[np.float64]
+BLOCK = 64
+
+
+def companion(denominator: Array) -> Array:
+    """(n, n) companion matrix of monic ascending coefficients (n + 1,)."""
+    n = denominator.size - 1
+    out = np.eye(n, k=1)
+    out[-1] = -denominator[:-1]
+    return out
+
+
+def chains(denominator: Array) -> tuple[Array, Array]:
+    """(2n, 2n) and (2n,): the two chains x' = F x + e u, z' = F z + e x[0] in one system."""
+    n = denominator.size - 1
+    a = np.zeros((2 * n, 2 * n))
+    a[:n, :n] = a[n:, n:] = companion(denominator)
+    a[2 * n - 1, 0] = 1.0
+    b = np.zeros(2 * n)
+    b[n - 1] = 1.0
+    return a, b
+
+
+def held(a: Array, b: Array, duration: float) -> tuple[Array, Array]:
+    """Φ and Γ of x(t + duration) = Φ x(t) + Γ u for a constant u."""
+    n = b.size
+    block = np.zeros((n + 1, n + 1))
+    block[:n, :n] = a * duration
+    block[:n, n] = b * duration
+    e = expm(block)
+    return e[:n, :n], e[:n, n]
+
+
+def ramped(a: Array, b: Array, duration: float) -> tuple[Array, Array, Array]:
+    """Φ, Γ0, Γ1 of x(t + duration) = Φ x(t) + Γ0 u(t) + Γ1 u(t + duration) for a straight line."""
+    n = b.size
+    block = np.zeros((n + 2, n + 2))
+    block[:n, :n] = a * duration
+    block[:n, n] = b * duration
+    block[n, n + 1] = 1.0
+    e = expm(block)
+    return e[:n, :n], e[:n, n] - e[:n, n + 1], e[:n, n + 1]
+
+
+def recursion(phi: Array, drive: Array, initial: Array, block: int = BLOCK) -> Array:
+    """x[k+1] = Φ x[k] + drive[:, k], all k at once by blocks of matrix products.
+
+    Parameters
+    ----------
+    phi : (n, n), drive : (n, N), initial : (n,)
+
+    Returns
+    -------
+    (n, N) states x[0] … x[N-1]
+    """
+    n, count = drive.shape
+    length = min(block, count)
+    blocks = -(-count // length)
+    padded = np.zeros((n, blocks * length))
+    padded[:, :count] = drive
+    powers = np.empty((length + 1, n, n))
+    powers[0] = np.eye(n)
+    for k in range(length):
+        powers[k + 1] = phi @ powers[k]
+    toeplitz = np.zeros((length, n, length, n))
+    for k in range(1, length):
+        toeplitz[k, :, :k, :] = powers[:k][::-1].transpose(1, 0, 2)
+    cut = padded.reshape(n, blocks, length).transpose(1, 2, 0).reshape(blocks, length * n)
+    states = (cut @ toeplitz.reshape(length * n, length * n).T).reshape(blocks, length, n)
+    last = cut @ powers[:length][::-1].transpose(0, 2, 1).reshape(length * n, n)
+    entering = np.empty((blocks, n))
+    x = np.array(initial, dtype=float)
+    for k in range(blocks):
+        entering[k] = x
+        x = powers[length] @ x + last[k]
+    states += (entering @ powers[:length].transpose(2, 0, 1).reshape(n, length * n)).reshape(
+        blocks, length, n
+    )
+    return states.reshape(blocks * length, n).T[:, :count]
+
+
+def free_responses(phi: Array, count: int) -> Array:
+    """(n, N): the first state for a unit start of each state."""
+    n = phi.shape[0]
+    nothing = np.zeros((n, count))
+    return np.array([recursion(phi, nothing, unit)[0] for unit in np.eye(n)])
+
+
+def delayed(samples: Array, count: int) -> Array:
+    """(r, N) samples moved later by a whole number of rows; steady at the first value before."""
+    count = min(count, samples.shape[1])
+    first = np.repeat(samples[:, :1], count, axis=1)
+    return np.concatenate([first, samples[:, : samples.shape[1] - count]], axis=1)
+
+
+def drives(
+    a: Array, b: Array, samples: Array, interval: float, between: str, dead_time: float = 0.0
+) -> tuple[Array, Array, Array]:
+    """What enters the state over each interval, the delayed input at each sample, and Φ.
+
+    A dead time need not be a whole number of intervals: a held input then has its step inside the interval,
+    a ramped one its corner, and both are followed exactly.
+
+    Parameters
+    ----------
+    samples : (r, N)
+
+    Returns
+    -------
+    drive (r, n, N), now (r, N), phi (n, n)
+    """
+    ratio = dead_time / interval
+    whole = int(np.floor(ratio + 1e-12))
+    part = max(ratio - whole, 0.0)
+    near, far = delayed(samples, whole), delayed(samples, whole + 1)
+    if between == "held":
+        phi, all_of_it = held(a, b, interval)
+        _, later = held(a, b, (1.0 - part) * interval)
+        drive = near[:, None, :] * later[:, None] + far[:, None, :] * (all_of_it - later)[:, None]
+        return drive, (far if part > 0 else near), phi
+    now = (1.0 - part) * near + part * far
+    following = np.concatenate([now[:, 1:], 2 * now[:, -1:] - now[:, -2:-1]], axis=1)
+    if part == 0.0:
+        phi, from_now, to_next = ramped(a, b, interval)
+        return now[:, None, :] * from_now[:, None] + following[:, None, :] * to_next[:, None], now, phi
+    first, a0, a1 = ramped(a, b, part * interval)
+    second, b0, b1 = ramped(a, b, (1.0 - part) * interval)
+    drive = (
+        now[:, None, :] * (second @ a0)[:, None]
+        + near[:, None, :] * (second @ a1 + b0)[:, None]
+        + following[:, None, :] * b1[:, None]
+    )
+    return drive, now, second @ first
