@@ -1,8 +1,8 @@
 """What an input does between its samples, followed exactly.
 
-With the companion matrix of a denominator A, the state x of the first chain holds s^k/A u (k = 0 … n-1), and a
-second chain z, driven by x[0], holds s^k/A² u: all that a transfer function with the denominator A, and its
-derivative by A's coefficients, is made of.
+With the companion matrix of a denominator A, the state x of the first chain holds s^k/A u (k = 0 … n-1), and
+a second chain z, driven by x[0], holds s^k/A² u: all that a transfer function with the denominator A, and its
+derivative by the coefficients of A, is made of.
 
 Source: block exponentials of Van Loan, IEEE Transactions on Automatic Control 23 (1978) 395 (from memory).
 """
