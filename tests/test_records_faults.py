@@ -134,7 +134,7 @@ def test_a_fast_ring_is_no_spike() -> None:
 
 @pytest.mark.parametrize("hertz", [50.0, 60.0, 49.93])
 def test_mains_hum_is_found_with_its_amplitude(hertz: float) -> None:
-    """A tenth of the noise in amplitude is found in 20 000 samples, its size right within 25 %, its frequency to a bin."""
+    """A tenth of the noise is found in 20 000 samples: size within 25 %, frequency to a bin."""
     t = np.arange(20000) * INTERVAL
     samples = np.random.default_rng(17).standard_normal(20000) + 0.1 * np.sin(2 * np.pi * hertz * t)
     fault = faults(samples)["mains-hum"]

@@ -152,9 +152,11 @@ class _Wave:
             return None
         if self.height[row + 1] - self.height[row] > 0.3:
             return self._between(row, share)
-        # noise asks for more samples than the bare reach holds
-        widened = float(np.clip(self.sigma / 0.01 * math.sqrt(30.0 / self.run), 1.0, 2.5))
+        # noise asks for more samples than the bare reach holds, a clean wave for fewer
+        widened = float(np.clip(self.sigma / 0.005 * math.sqrt(30.0 / self.run), 0.3, 2.5))
         back, ahead = widened * REACH[share][0], widened * REACH[share][1]
+        if share < 0.5:
+            back = min(back, REACH[share][0])
         step = float(np.median(np.diff(self.time)))
         middle_time = 0.5 * float(self.time[row] + self.time[row + 1])
         found = None
