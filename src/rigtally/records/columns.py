@@ -222,8 +222,11 @@ def _check_names(
 
 
 def time_like(name: str) -> bool:
-    """Whether a column's name says that it is the time."""
-    bare = _SUFFIX.sub("", name.strip()).lower()
+    """Whether a column's name says that it is the time. (T is a temperature or a torque.)"""
+    bare = _SUFFIX.sub("", name.strip())
+    if bare == "T":
+        return False
+    bare = bare.lower()
     words = [word for word in re.split(r"[^a-zµäöü]+", bare) if word]
     return bool(words) and (words[-1] in _TIME_WORDS or words[0] in _TIME_WORDS - {"t"}) and len(words) <= 3
 
@@ -238,7 +241,7 @@ def _clock(
 ) -> Clocked:
     if time is not None:
         return _read(_named(columns, time, file), columns, rate or stated_rate, units, file)
-    numbers = [c for c in columns if c.kind == "number" and time_like(c.name)]
+    numbers = [c for c in columns if c.kind == "number" and time_like(c.name) and _may_be_time(c, units)]
     dates = [c for c in columns if c.kind == "date"]
     clocks = [c for c in columns if c.kind == "clock"]
     stamps = [c for c in columns if c.kind == "stamp"]
@@ -321,6 +324,13 @@ def _read(
     else:
         factor, words = _guessed(values, column, rate, file)
     return Clocked(values if factor == 1.0 else values * factor, (column.name,), words, {})
+
+
+def _may_be_time(column: Column, units: Mapping[str, str]) -> bool:
+    """Not where a unit of something else is written."""
+    written = _time_unit(column, units)
+    found = known(written) if written is not None else None
+    return found is None or found.si == "s"
 
 
 def _time_unit(column: Column, units: Mapping[str, str]) -> str | None:

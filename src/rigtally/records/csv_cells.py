@@ -10,10 +10,11 @@ from functools import lru_cache
 # Spellings of "no value here", in lower case.
 MISSING = frozenset(
     {
-        "", "nan", "-nan", "na", "n/a", "n.a.", "#n/a", "#na", "<na>", "null", "none", "nil", "-", "--",
-        "---", "?", "*", "missing", "no data", "nodata", "invalid", "void", "#value!", "#div/0!", "#ref!", "#num!",
-        "1.#qnan", "-1.#qnan", "1.#ind", "-1.#ind", "1,#qnan", "-1,#qnan", "1,#ind", "-1,#ind", "-nan(ind)",
-        "nan(ind)", "err", "error", "bad", "fail", "ol", "ovl", "over", "overload", "overrange", "overflow",
+        "", "nan", "-nan", "na", "n/a", "n.a.", "#n/a", "#na", "<na>", "null", "none", "nil", "-",
+        "--", "---", "?", "*", "missing", "no data", "nodata", "invalid", "void", "#value!",
+        "#div/0!", "#ref!", "#num!", "1.#qnan", "-1.#qnan", "1.#ind", "-1.#ind", "1,#qnan",
+        "-1,#qnan", "1,#ind", "-1,#ind", "-nan(ind)", "nan(ind)", "err", "error", "bad", "fail",
+        "ol", "ovl", "over", "overload", "overrange", "overflow",
     }
 )  # fmt: skip
 # Spaces and high commas that group digits; all are read as one mark.
@@ -134,5 +135,5 @@ def split(line: str, separator: str) -> list[str]:
             return [line]
         return [cell.strip() for cell in cells]
     if separator == " ":
-        return line.split()
+        return [cell for cell in re.split(r"[ \t]+", line) if cell]
     return [cell.strip() for cell in line.split(separator)]

@@ -265,10 +265,10 @@ def _only(lines: Lines, found: list[Layout], wishes: Wishes) -> Layout:
             continue
         raise _ambiguous(lines, row, _reading(lines, row, best), _reading(lines, row, other), "--separator")
     stated = wishes.separator == "," and wishes.decimal == "."
-    if best.separator == "," and best.count > 1 and not stated:
-        # names tell how many columns there are, unless the caller says that commas are decimal signs
-        if not best.header_speaks or wishes.decimal == ",":
-            _refuse_pairs(lines, best)
+    # names tell how many columns there are, unless the caller says that commas are decimal signs
+    told = stated or (best.header_speaks and wishes.decimal != ",")
+    if best.separator == "," and best.count > 1 and not told:
+        _refuse_pairs(lines, best)
     return best
 
 
