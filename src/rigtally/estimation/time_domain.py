@@ -1,0 +1,258 @@
+"""The time road: output error by maximum likelihood, what the input does between samples followed exactly.
+
+Model: y = G(θ) u + offset + drift + free response of a free initial state + noise, the noise an autoregression
+whose order is found (white is order 0). Numerator, denominator and dead time are iterated; offset, drift and
+initial state are solved in closed form at every step. Sources: Ljung, System Identification (1999), chapters 7
+and 16; Golub & Pereyra (1973) for the projection (both from memory).
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rigtally.errors import FitError
+from rigtally.estimation.result import RoadResult, Warning_
+from rigtally.estimation.time_carry import Carrier, Found
+from rigtally.estimation.time_noise import Noise, estimate
+from rigtally.estimation.time_problem import Problem
+from rigtally.estimation.time_start import starts
+from rigtally.estimation.trial import Trial
+from rigtally.quantities.coverage import coverage_factor
+
+Array = NDArray[np.float64]
+ROUNDS = 3
+
+
+def fit_time(trial: Trial, start: Array | None = None) -> RoadResult:
+    """Fit a trial on the time road.
+
+    Parameters
+    ----------
+    trial : Trial
+    start : (p,) array, optional
+        Where to begin; without it the road finds its own start.
+
+    Raises
+    ------
+    FitError
+        code "no-convergence": no start led to a fit; "too-few-samples": fewer samples than parameters.
+    """
+    problem = Problem(trial, trial.segments)
+    inert = inert_parameters(trial)
+    carrier = Carrier(trial, inert)
+    if problem.samples <= len(carrier.varying) + 2:
+        raise FitError(
+            f"{problem.samples} samples cannot determine {len(carrier.varying)} parameters",
+            do="use a longer record or a simpler form",
+            code="too-few-samples",
+        )
+    found = _first(problem, carrier, start)
+    found = _with_noise(problem, carrier, found)
+    return _result(problem, carrier, found, inert)
+
+
+def inert_parameters(trial: Trial) -> frozenset[str]:
+    """Numerator parameters that no input excites: a release has no gain."""
+    if all(segment.excitation == "release" for segment in trial.segments):
+        return frozenset(trial.form.names[: trial.form.numerator_count])
+    return frozenset()
+
+
+def _first(problem: Problem, carrier: Carrier, start: Array | None) -> Found:
+    """White-noise fits from the candidate starts; the best one, finished."""
+
+    def reduced(theta: Array) -> tuple[Array, Array]:
+        residual, jacobian, _ = problem.reduced(theta)
+        return residual, jacobian
+
+    candidates = [start] if start is not None else starts(problem.trial)
+    best: Found | None = None
+    for theta in candidates:
+        try:
+            found = carrier.minimise(reduced, theta, evaluations=40)
+        except (ValueError, np.linalg.LinAlgError, FloatingPointError):
+            continue
+        if np.isfinite(found.cost) and (best is None or found.cost < best.cost):
+            best = found
+    if best is None:
+        raise FitError(
+            "no start led to a fit on the time road",
+            do="look at the log with `rigtally inspect`, or try another form",
+            code="no-convergence",
+        )
+    return carrier.minimise(reduced, best.theta, evaluations=200)
+
+
+def _with_noise(problem: Problem, carrier: Carrier, found: Found) -> Found:
+    """Estimate the noise of the residual and fit again under it, until it settles."""
+    stated = problem.trial.noise
+    if not isinstance(stated, str):
+        problem.noise = [Noise(np.array([1.0]), float(stated))] * problem.outputs
+
+    def reduced(theta: Array) -> tuple[Array, Array]:
+        residual, jacobian, _ = problem.reduced(theta)
+        return residual, jacobian
+
+    for _ in range(ROUNDS):
+        if isinstance(stated, str):
+            spent = problem.reduced(found.theta)[2] + len(carrier.varying)
+            pieces = problem.residuals(found.theta)
+            each = round(spent / problem.outputs)
+            problem.noise = [estimate(rows, stated == "estimated", each) for rows in pieces]
+        found = carrier.minimise(reduced, found.theta, evaluations=100)
+        if all(noise.white for noise in problem.noise) and problem.outputs == 1:
+            break
+    return found
+
+
+def covariance_of(jacobian: Array, moves: Array, varying: list[int]) -> tuple[Array, list[int]]:
+    """Covariance by QR of the whitened Jacobian; positions of parameters that lie in its null space.
+
+    Parameters
+    ----------
+    jacobian : (m, p) whitened; moves : (varying, p)
+        How the vector moves with each varying parameter.
+
+    Returns
+    -------
+    (p, p) covariance, NaN in rows and columns that are not determined
+    """
+    p = jacobian.shape[1]
+    out = np.zeros((p, p))
+    if not varying:
+        return out, []
+    table = jacobian @ moves.T
+    size = np.linalg.norm(table, axis=0)
+    dead = size <= 0
+    scaled = table / np.where(dead, 1.0, size)
+    _, singular, vt = np.linalg.svd(np.linalg.qr(scaled, mode="r"), full_matrices=False)
+    weak = singular <= 1e-9 * max(float(singular.max(initial=0.0)), 1e-300)
+    inverse = np.where(weak, 0.0, 1.0 / np.where(weak, 1.0, singular))
+    root = (vt.T * inverse) / np.where(dead, 1.0, size)[:, None]
+    small = root @ root.T
+    lost_in = set(np.flatnonzero(np.any(np.abs(vt[weak]) > 0.1, axis=0))) | set(np.flatnonzero(dead))
+    out = moves.T @ small @ moves
+    lost = sorted({j for k in lost_in for j in np.flatnonzero(moves[k])})
+    for j in lost:
+        out[j, :] = np.nan
+        out[:, j] = np.nan
+    return out, lost
+
+
+def _result(problem: Problem, carrier: Carrier, found: Found, inert: frozenset[str]) -> RoadResult:
+    """What the road leaves behind."""
+    theta = _normal(problem.trial, found.theta)
+    _, jacobian, spent = problem.reduced(theta)
+    moves = carrier.tie_slopes(theta, carrier.varying)
+    covariance, lost = covariance_of(jacobian, moves, carrier.varying)
+    share = min(noise.independent_share for noise in problem.noise)
+    stated = not isinstance(problem.trial.noise, str)
+    dof = np.inf if stated else max((problem.samples - spent - len(carrier.varying)) * share, 1.0)
+    names = problem.trial.form.names
+    for k, name in enumerate(names):
+        if name in inert:
+            theta[k] = np.nan
+            covariance[k, :] = np.nan
+            covariance[:, k] = np.nan
+    fitted, values = problem.fitted(np.where(np.isfinite(theta), theta, 1.0))
+    warnings = tuple(
+        Warning_("not-determined", f"the log does not determine {names[k]}")
+        for k in lost
+        if names[k] not in inert
+    )
+    return RoadResult(
+        road="time",
+        theta=theta,
+        covariance=covariance,
+        dof=float(dof),
+        fitted=fitted,
+        cost=found.cost,
+        noise=tuple("stated" if stated else "white" if n.white else "coloured" for n in problem.noise),
+        effective_samples=tuple(
+            float(sum(v[i].sum() for v in problem.valid)) * noise.independent_share
+            for i, noise in enumerate(problem.noise)
+        ),
+        nuisance=values,
+        evaluations=found.evaluations,
+        converged=found.converged,
+        warnings=warnings,
+    )
+
+
+def _normal(trial: Trial, theta: Array) -> Array:
+    """ωn positive: (ωn, ζ) and (-ωn, -ζ) are one denominator."""
+    out = np.array(theta, dtype=float)
+    names = trial.form.names
+    if "natural_frequency" in names and out[names.index("natural_frequency")] < 0:
+        for name in ("natural_frequency", "damping_ratio"):
+            out[names.index(name)] *= -1.0
+    return out
+
+
+def profile(trial: Trial, result: RoadResult, name: str, probability: float = 0.95) -> tuple[float, float]:
+    """Interval of one parameter from the profile of the whitened likelihood.
+
+    The parameter is held (lmfit) at values further and further away while all others are fitted again; an end
+    lies where the cost has grown by t². An end that is not reached within six decades is open (±inf).
+    """
+    names = trial.form.names
+    k = names.index(name)
+    centre = float(result.theta[k])
+    problem = Problem(trial, trial.segments)
+    carrier = Carrier(trial, inert_parameters(trial))
+    start = np.where(np.isfinite(result.theta), result.theta, 1.0)
+    found = _with_noise(problem, carrier, Found(start, result.cost, 0, True))
+    problem = replace(problem)
+    rise = coverage_factor(probability, result.dof) ** 2
+
+    def reduced(theta: Array) -> tuple[Array, Array]:
+        residual, jacobian, _ = problem.reduced(theta)
+        return residual, jacobian
+
+    positive = name in ("natural_frequency", "time_constant", "damping_ratio", "dead_time") and centre > 0
+    u = float(np.sqrt(result.covariance[k, k]))
+    if not np.isfinite(u) or u <= 0:
+        u = 0.5 * abs(centre) or 1.0
+    ends = []
+    for sign in (-1.0, 1.0):
+        theta, inside, step, end = found.theta, 0.0, 1.0, sign * np.inf
+        for _ in range(40):
+            value = _away(centre, u, sign * step, positive)
+            there = carrier.minimise(reduced, theta, held={name: value}, evaluations=40)
+            if there.cost - found.cost >= rise:
+                end = _between(
+                    carrier, reduced, name, found, theta, rise, centre, u, sign, inside, step, positive
+                )
+                break
+            theta, inside, step = there.theta, step, step * 1.6
+            if positive and not 1e-6 < value / centre < 1e6:
+                end = 0.0 if sign < 0 else np.inf
+                break
+        ends.append(float(end))
+    return ends[0], ends[1]
+
+
+def _away(centre: float, u: float, steps: float, positive: bool) -> float:
+    """`steps` standard uncertainties from the centre: on a logarithmic scale for a positive parameter."""
+    if positive:
+        return float(centre * np.exp(steps * min(u / centre, 1.0)))
+    return centre + steps * u
+
+
+def _between(
+    carrier: Carrier, reduced: object, name: str, found: Found, theta: Array, rise: float, centre: float, u: float,
+    sign: float, inside: float, outside: float, positive: bool,
+) -> float:  # fmt: skip
+    """Halve the step in which the profile crosses the level, eight times."""
+    for _ in range(8):
+        middle = 0.5 * (inside + outside)
+        value = _away(centre, u, sign * middle, positive)
+        there = carrier.minimise(reduced, theta, held={name: value}, evaluations=40)  # type: ignore[arg-type]
+        if there.cost - found.cost >= rise:
+            outside = middle
+        else:
+            inside, theta = middle, there.theta
+    return _away(centre, u, sign * 0.5 * (inside + outside), positive)
