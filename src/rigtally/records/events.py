@@ -13,6 +13,7 @@ from rigtally.errors import LogError
 from rigtally.quantities.uncertain import Uncertain
 from rigtally.records.dwell import fit_sine
 from rigtally.records.event import Event, Kind
+from rigtally.records.faults import find_faults
 from rigtally.records.levels import level
 from rigtally.records.movements import movements
 from rigtally.records.oscillation import Swing, swings
@@ -29,6 +30,7 @@ def find_events(record: Record, input_name: str | None = None) -> tuple[Event, .
     Parameters
     ----------
     record : Record
+        Examined by `find_faults`, so that spikes are known from pulses and steps of a converter from levels.
     input_name : str or None
         The channel that drives. Without it, the channel whose movement is the most abrupt and comes first.
 
@@ -55,7 +57,7 @@ def event_window(record: Record, number: int, input_name: str | None = None) -> 
     LogError
         code "no-such-event", with the events there are.
     """
-    events = find_events(record, input_name)
+    events = find_events(find_faults(record), input_name)
     for event in events:
         if event.number == number:
             return event.window

@@ -12,8 +12,8 @@ Array = NDArray[np.float64]
 FEWEST_CYCLES = 3
 # frequencies within so much of each other belong to one dwell
 SAME_FREQUENCY = 0.03
-# mean modulus of a half-cycle over its peak: 0.64 for a sine, 0.5 for a triangle, 1 for a square
-SQUARE = 0.8
+# m₄/m₂² of a half-cycle about the median, noise taken out: 1 for a square, 1.5 for a sine, 1.8 for a triangle
+SQUARE = 1.2
 
 
 @dataclass(frozen=True)
@@ -44,11 +44,11 @@ def swings(time: Array, samples: Array, sigma: float, extent: float) -> tuple[Sw
         return None
     passages = _passage_times(time, samples, edges)
     halves = np.diff(passages)
-    peaks, fullness = _shape(samples, edges)
+    peaks, fullness = _shape(samples, edges, sigma)
     moving = halves > 0
     if not moving.all():
         return None
-    square = float(halves[fullness > SQUARE].sum() / halves.sum())
+    square = float(halves[fullness < SQUARE].sum() / halves.sum())
     resting = float(halves[halves > 8.0 * np.median(halves)].sum() / halves.sum()) if square > 0.2 else 0.0
     if (
         square > 0.5
@@ -59,7 +59,9 @@ def swings(time: Array, samples: Array, sigma: float, extent: float) -> tuple[Sw
         return None
     # whole cycles from passage to passage in the same direction
     frequency = 1.0 / (passages[2:] - passages[:-2])
-    return _runs(edges, frequency, samples.size)
+    # a passage scatters by σ/(2π f A), whatever f: its share of a cycle is that of both ends
+    scatter = np.sqrt(2.0) * sigma / (2.0 * np.pi * float(np.median(peaks)))
+    return _runs(edges, frequency, samples.size, max(SAME_FREQUENCY, 6.0 * scatter))
 
 
 def half_cycles(samples: Array, band: float) -> NDArray[np.intp]:
@@ -85,15 +87,21 @@ def _passage_times(time: Array, samples: Array, edges: NDArray[np.intp]) -> Arra
     return np.asarray(time[last] + np.clip(part, 0.0, 1.0) * (time[last + 1] - time[last]))
 
 
-def _shape(samples: Array, edges: NDArray[np.intp]) -> tuple[Array, Array]:
-    """Peak of each half-cycle, and its mean modulus over the peak."""
-    modulus = np.abs(samples - np.median(samples))
-    peaks = np.maximum.reduceat(modulus, edges[:-1])[: edges.size - 1]
-    # reduceat runs the last bin to the end of the record: cut it at the last edge
-    peaks[-1] = modulus[edges[-2] : edges[-1]].max()
-    total = np.concatenate([[0.0], np.cumsum(modulus)])
-    means = (total[edges[1:]] - total[edges[:-1]]) / np.diff(edges)
-    return peaks, means / np.maximum(peaks, 1e-300)
+def _shape(samples: Array, edges: NDArray[np.intp], sigma: float) -> tuple[Array, Array]:
+    """Amplitude √(2 m₂) of each half-cycle, and m₄/m₂²; the moments less those that noise adds.
+
+    For a sum of signal and normal noise E x² = m₂ + σ² and E x⁴ = m₄ + 6 σ² m₂ + 3 σ⁴.
+    """
+    centred = samples - np.median(samples)
+    lengths = np.diff(edges)
+
+    def means(values: Array) -> Array:
+        total = np.concatenate([[0.0], np.cumsum(values)])
+        return np.asarray((total[edges[1:]] - total[edges[:-1]]) / lengths)
+
+    second = np.maximum(means(centred**2) - sigma**2, 1e-300)
+    fourth = means(centred**4) - 6.0 * sigma**2 * second - 3.0 * sigma**4
+    return np.sqrt(2.0 * second), fourth / second**2
 
 
 def _decays(peaks: Array) -> bool:
@@ -105,26 +113,23 @@ def _decays(peaks: Array) -> bool:
     return bool(slope * peaks.size < -1.2 and fitted < -0.9)
 
 
-def _runs(edges: NDArray[np.intp], frequency: Array, count: int) -> tuple[Swing, ...]:
+def _runs(edges: NDArray[np.intp], frequency: Array, count: int, same: float) -> tuple[Swing, ...]:
     """Neighbouring cycles of one frequency are a dwell; frequencies that keep moving one way are a sweep."""
     logs = np.log(frequency)
     starts = [0]
     reference = logs[0]
     for k in range(1, logs.size):
-        if (
-            abs(logs[k] - reference) > SAME_FREQUENCY
-            and abs(logs[k] - logs[starts[-1] : k].mean()) > SAME_FREQUENCY
-        ):
+        if abs(logs[k] - reference) > same and abs(logs[k] - logs[starts[-1] : k].mean()) > same:
             starts.append(k)
             reference = logs[k]
         else:
             reference += (logs[k] - reference) / min(k - starts[-1] + 1, 8)
     ends = [*starts[1:], logs.size]
     runs = [(a, b) for a, b in zip(starts, ends, strict=True) if b - a >= 2 * FEWEST_CYCLES - 1]
-    steady = [(a, b) for a, b in runs if _steady(logs[a:b])]
+    steady = [(a, b) for a, b in runs if _steady(logs[a:b], same)]
     covered = sum(b - a for a, b in steady) / logs.size
     if steady and covered > 0.5:
-        return tuple(_swing("dwell", a, b, edges, frequency, count) for a, b in _joined(steady, logs))
+        return tuple(_swing("dwell", a, b, edges, frequency, count) for a, b in _joined(steady, logs, same))
     smooth = np.convolve(logs, np.full(5, 0.2), mode="valid") if logs.size >= 5 else logs
     moves = np.diff(smooth)
     one_way = abs(float(moves.sum())) > 0.7 * float(np.abs(moves).sum())
@@ -132,19 +137,19 @@ def _runs(edges: NDArray[np.intp], frequency: Array, count: int) -> tuple[Swing,
     return (_swing(kind, 0, logs.size, edges, frequency, count),)
 
 
-def _steady(logs: Array) -> bool:
+def _steady(logs: Array, same: float) -> bool:
     """Whether a run's frequency stands still: its two halves differ by less than a third of the tolerance."""
     half = logs.size // 2
-    return bool(abs(np.median(logs[:half]) - np.median(logs[half:])) < SAME_FREQUENCY / 3.0)
+    return bool(abs(np.median(logs[:half]) - np.median(logs[half:])) < same / 3.0)
 
 
-def _joined(runs: list[tuple[int, int]], logs: Array) -> list[tuple[int, int]]:
+def _joined(runs: list[tuple[int, int]], logs: Array, same: float) -> list[tuple[int, int]]:
     """Runs of one frequency that only a disturbed cycle or two parts."""
     out = [runs[0]]
     for begin, end in runs[1:]:
         first, last = out[-1]
-        same = abs(np.median(logs[begin:end]) - np.median(logs[first:last])) < SAME_FREQUENCY / 3.0
-        if same and begin - last <= 2:
+        alike = abs(np.median(logs[begin:end]) - np.median(logs[first:last])) < same / 3.0
+        if alike and begin - last <= 2:
             out[-1] = (first, end)
         else:
             out.append((begin, end))

@@ -153,7 +153,8 @@ class _Wave:
         if self.height[row + 1] - self.height[row] > 0.3:
             return self._between(row, share)
         # noise asks for more samples than the bare reach holds, a clean wave for fewer
-        widened = float(np.clip(self.sigma / 0.005 * math.sqrt(30.0 / self.run), 0.3, 2.5))
+        least = 0.3 if self.sigma < 1e-4 else 1.0
+        widened = float(np.clip(self.sigma / 0.005 * math.sqrt(30.0 / self.run), least, 2.5))
         back, ahead = widened * REACH[share][0], widened * REACH[share][1]
         if share < 0.5:
             back = min(back, REACH[share][0])
