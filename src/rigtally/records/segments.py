@@ -19,6 +19,8 @@ BLOCK_NOISE = 0.0025
 FEWEST_BLOCKS = 500
 # rise over a level, as a share of the range, that passes as drift
 DRIFT = 0.03
+# noise of rounding, as a share of the range, up to which it is believed
+COARSEST = 0.03
 
 
 @dataclass(frozen=True)
@@ -68,9 +70,10 @@ def stretches(samples: Array, resolution: float = float("nan")) -> Stretches:
     count = samples.size
     sigma = noise_sigma(samples)
     sigma = sigma if math.isfinite(sigma) else 0.0
-    if math.isfinite(resolution):
-        sigma = max(sigma, resolution / math.sqrt(12.0))
     size = extent(samples, sigma)
+    if math.isfinite(resolution):
+        # two values of a command look like a resolution as large as their distance
+        sigma = max(sigma, min(resolution / math.sqrt(12.0), COARSEST * size))
     if count < 8 or size <= 0.0:
         return Stretches(((0, count),), math.inf, sigma, count)
     wanted = math.ceil((sigma / (BLOCK_NOISE * size)) ** 2)
