@@ -7,14 +7,14 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
-from rigtally.physics.model import Model, Solved
+from rigtally.physics.line_model import LineModel, Solved
 from rigtally.quantities.uncertain import Uncertain
 
 Array = NDArray[np.float64]
 REAL_POLE = 1e-9  # |Im p| below this share of |p| is a real pole
 
 
-def derived_quantities(model: Model, solved: Solved, u: Array) -> dict[str, Uncertain]:
+def derived_quantities(model: LineModel, solved: Solved, u: Array) -> dict[str, Uncertain]:
     """Frequencies in Hz, overshoot, poles as ωn and ζ or time constants.
 
     Parameters

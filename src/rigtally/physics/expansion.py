@@ -77,32 +77,40 @@ def eliminate(network: Network) -> tuple[list[Row], list[Row], list[str]]:
     outputs = [{c: dict(p) for c, p in row.items()} for row in network.outputs]
     owners = list(network.row_owners)
     size = len(network.columns)
-    waiting = list(range(len(rows)))
-    kept: list[int] = []
-    while waiting:
-        best = None
-        for k in waiting:
-            whole = all(set(p) == {0} for c, p in rows[k].items() if c < size)
-            pivots = [c for c, p in rows[k].items() if c < size and p in ({0: 1}, {0: -1})]
-            if whole and pivots and (best is None or len(rows[k]) < len(rows[best[0]])):
-                best = (k, pivots)
-        if best is None:
-            break
-        k, pivots = best
-        counts = {c: sum(c in rows[m] for m in waiting) for c in pivots}
-        pivot = min(pivots, key=lambda c: (counts[c], c))
+    everything = [*rows, *outputs]
+    holders: dict[int, set[int]] = {}
+    for k, row in enumerate(everything):
+        for c in row:
+            holders.setdefault(c, set()).add(k)
+    whole = {k for k, row in enumerate(rows) if _whole(row, size)}
+    gone: set[int] = set()
+    while whole:
+        k = min(whole, key=lambda m: (len(rows[m]), m))
+        whole.remove(k)
         source = rows[k]
+        pivots = [c for c, p in source.items() if c < size and p in ({0: 1}, {0: -1})]
+        if not pivots:
+            continue
+        pivot = min(pivots, key=lambda c: (len(holders[c]), c))
         sign = source[pivot][0]
-        for target in [*(rows[m] for m in waiting if m != k), *outputs]:
-            factor = target.pop(pivot, None)
-            if factor is None:
-                continue
+        gone.add(k)
+        for m in holders.pop(pivot) - gone:
+            target = everything[m]
+            factor = target.pop(pivot)
             for c, p in source.items():
                 if c != pivot:
                     add(target, c, _product(factor, p), -sign)
-        waiting.remove(k)
-    kept = waiting
+                    (holders[c].add if c in target else holders[c].discard)(m)
+        for c in source:
+            if c != pivot:
+                holders[c].discard(k)
+    kept = [k for k in range(len(rows)) if k not in gone]
     return [rows[k] for k in kept], outputs, [owners[k] for k in kept]
+
+
+def _whole(row: Row, size: int) -> bool:
+    """Whether the unknowns' coefficients are whole numbers without s."""
+    return all(set(p) == {0} for c, p in row.items() if c < size)
 
 
 def relevant(

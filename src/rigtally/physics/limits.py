@@ -5,12 +5,14 @@ from __future__ import annotations
 from dataclasses import replace
 
 from rigtally.errors import RigError
+from rigtally.physics.expansion import TooLarge
+from rigtally.physics.line_model import LineModel
 from rigtally.physics.model import Model
 from rigtally.physics.prediction_result import Finding
 from rigtally.physics.rig import Rig
 
 
-def line_limits(model: Model) -> tuple[Finding, ...]:
+def line_limits(model: LineModel) -> tuple[Finding, ...]:
     """Womersley number of each laminar line, its model uncertainty, and ωn and ζ by the other models."""
     lines = [e for e in model.rig.elements if e.kind == "laminar-line"]
     if not lines:
@@ -19,20 +21,17 @@ def line_limits(model: Model) -> tuple[Finding, ...]:
     for line in model.values.oscillating:
         alpha = model.womersley(line)
         friction = model.values.friction[line.name]
-        out.append(
-            Finding(
-                "womersley-number",
-                f"{line.name}: Womersley number {alpha:.3g} at {model.omega:.4g} rad/s; over 0.5 to 2 times "
-                f"that frequency its resistance spreads by ±{100 * friction.half_width:.2g} % and its "
-                f"inertance by ±{100 * friction.half_width * abs(friction.inertance_slope):.2g} % (carried as the "
-                "line's friction model)",
-                alpha,
-            )
+        spread = 100.0 * friction.half_width
+        text = (
+            f"{line.name}: Womersley number {alpha:.3g} at {model.omega:.4g} rad/s; over 0.5 to 2 times that "
+            f"frequency its resistance spreads by ±{spread:.2g} % and its inertance by "
+            f"±{spread * abs(friction.inertance_slope):.2g} % (carried as the line's friction model)"
         )
+        out.append(Finding("womersley-number", text, alpha))
     for choice in ("oscillating", "steady", "plug"):
-        text = _by_friction(model.rig, choice)
-        if text:
-            out.append(Finding("friction-alternative", f'with friction = "{choice}": {text[0]}', text[1]))
+        found = _by_friction(model.rig, choice)
+        if found:
+            out.append(Finding("friction-alternative", f'with friction = "{choice}": {found[0]}', found[1]))
     return tuple(out)
 
 
@@ -45,7 +44,7 @@ def _by_friction(rig: Rig, choice: str) -> tuple[str, float] | None:
     try:
         model = Model(replace(rig, elements=elements))
         theta = model.solve().theta
-    except RigError:
+    except (RigError, TooLarge):
         return None
     named = dict(zip(model.form.names, theta, strict=True))
     if "natural_frequency" in named:

@@ -11,8 +11,12 @@ from numpy.typing import NDArray
 
 from rigtally.forms.transfer_matrix import TransferMatrix
 from rigtally.physics.derived import derived_quantities
+from rigtally.physics.expansion import TooLarge
+from rigtally.physics.large_model import POLYNOMIAL_ORDER, LargeModel
 from rigtally.physics.limits import line_limits
-from rigtally.physics.model import Model, Solved
+from rigtally.physics.line_model import LineModel, Solved
+from rigtally.physics.model import Model
+from rigtally.physics.network import assemble
 from rigtally.physics.prediction_result import Finding, Prediction
 from rigtally.physics.rig import Rig
 from rigtally.physics.tolerance_draws import monte_carlo_parameters
@@ -38,7 +42,7 @@ def predict(rig: Rig, *, monte_carlo: int = 0, seed: int = 0, progress: Progress
     RigError
         The network has no unique or no proper answer; the elements are named.
     """
-    model = Model(rig)
+    model = open_model(rig)
     solved = model.solve()
     form = model.form
     inputs = model.values.inputs
@@ -65,6 +69,10 @@ def predict(rig: Rig, *, monte_carlo: int = 0, seed: int = 0, progress: Progress
         "u_numerators": _spread(np.moveaxis(solved.by_numerators, 0, -1), u),
         **({"line_frequency": solved.omega} if math.isfinite(solved.omega) else {}),
     }
+    limits = line_limits(model)
+    if isinstance(model, LargeModel) and model.dominant is not None:
+        provenance["large"] = model.entries_report()
+        limits = (*limits, *_dominant_findings(provenance["large"], solved))
     return Prediction(
         title=rig.title,
         form=form,
@@ -82,11 +90,21 @@ def predict(rig: Rig, *, monte_carlo: int = 0, seed: int = 0, progress: Progress
         sensitivity=solved.sensitivity,
         evaluate=model.evaluate,
         budget=_budget(model, solved.sensitivity, u),
-        limits=line_limits(model),
+        limits=limits,
         warnings=tuple(warnings),
         removed_poles=model.reduction.removed,
         provenance=provenance,
     )
+
+
+def open_model(rig: Rig) -> LineModel:
+    """Expanded determinants where they are few and the order is at most 10, else the pencil."""
+    network = assemble(rig)
+    try:
+        model = Model(rig, network)
+    except TooLarge:
+        return LargeModel(rig, network)
+    return model if model.form.degree <= POLYNOMIAL_ORDER else LargeModel(rig, network)
 
 
 def _spread(sensitivity: Array, u: Array) -> Array:
@@ -99,7 +117,9 @@ def _spread(sensitivity: Array, u: Array) -> Array:
     return out
 
 
-def _budget(model: Model, sensitivity: Array, u: Array) -> dict[str, list[tuple[str, str, float]]]:
+def _budget(
+    model: LineModel, sensitivity: Array, u: Array
+) -> dict[str, list[tuple[str, str, float]]]:
     """Share of each value in the variance of each parameter, largest first; they sum to 1."""
     out: dict[str, list[tuple[str, str, float]]] = {}
     for name, row in zip(model.form.names, sensitivity, strict=True):
@@ -117,7 +137,7 @@ def _budget(model: Model, sensitivity: Array, u: Array) -> dict[str, list[tuple[
     return out
 
 
-def _warnings(model: Model, solved: Solved) -> list[Finding]:
+def _warnings(model: LineModel, solved: Solved) -> list[Finding]:
     out: list[Finding] = []
     exact = [n for n, x in zip(model.values.input_names, model.values.inputs, strict=True) if x.u == 0.0]
     exact = [n for n in exact if n != "rig.gravity"]
@@ -170,6 +190,19 @@ def _warnings(model: Model, solved: Solved) -> list[Finding]:
                 "not determined",
             )
         )
+    return out
+
+
+def _dominant_findings(entries: list[dict[str, Any]], solved: Solved) -> list[Finding]:
+    """How much of each entry's step response the dominant pair explains."""
+    out = []
+    for entry in entries:
+        share = entry["share"]
+        text = (
+            f"order {solved.poles.size}: the dominant pair explains {100 * share:.1f} % of the transient's "
+            f"energy in {entry['output']!r} over {entry['input']!r}"
+        )
+        out.append(Finding("dominant-pair" if share > 0.95 else "dominant-pair-weak", text, share))
     return out
 
 

@@ -127,6 +127,7 @@ class Reduction:
         q, r = nums.shape[:2]
         out = np.ones((1 + q * r, n + 1), dtype=bool)
         out[0, n] = False
+        out[0, : self.integrators] = False
         if self.powers:
             for k in range(q * r):
                 out[1 + k] = False

@@ -54,9 +54,10 @@ def _transfer(prediction: Prediction) -> dict[str, Any]:
                 {
                     "output": entry["output"],
                     "input": entry["input"],
-                    "zeros": [_pair(z) for z in entry["zeros"]],
-                    "gain": entry["gain"],
-                    "gain_power": entry["power"],
+                    "zeros": None if entry["zeros"] is None else [_pair(z) for z in entry["zeros"]],
+                    "gain": _gain(prediction, entry["output"], entry["input"]),
+                    "numerator_from": entry["power"],
+                    "explained": entry["share"],
                 }
                 for entry in large
             ],
@@ -98,6 +99,12 @@ def _transfer(prediction: Prediction) -> dict[str, Any]:
         for k, c in enumerate(matrix.denominator)
     ]
     return {"transfer": transfer, "denominator": denominator}
+
+
+def _gain(prediction: Prediction, output: str, drive: str) -> dict[str, Any] | None:
+    name = "gain" if prediction.form.single else f"gain({output}, {drive})"
+    found = prediction.parameters.get(name)
+    return found.to_dict() if found is not None else None
 
 
 def _coefficient_unit(prediction: Prediction, i: int, j: int, power: int) -> str:

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigtally.physics.elements import FRICTION_MODEL
-from rigtally.physics.model import Model, Solved
+from rigtally.physics.line_model import LineModel, Solved
 from rigtally.physics.prediction_result import Finding
 from rigtally.quantities.propagation import propagate
 from rigtally.quantities.uncertain import Uncertain
@@ -20,7 +20,7 @@ LARGE = 0.2  # relative u of a positive quantity above which it is drawn log-nor
 SIGNED = ("ratio", "temperature")  # values that may be negative
 
 
-def drawn_inputs(model: Model) -> tuple[tuple[Uncertain, ...], list[str]]:
+def drawn_inputs(model: LineModel) -> tuple[tuple[Uncertain, ...], list[str]]:
     """The inputs as they are drawn, and the names of those that are drawn log-normal."""
     out: list[Uncertain] = []
     changed: list[str] = []
@@ -36,7 +36,7 @@ def drawn_inputs(model: Model) -> tuple[tuple[Uncertain, ...], list[str]]:
 
 
 def monte_carlo_parameters(
-    model: Model,
+    model: LineModel,
     parameters: Mapping[str, Uncertain],
     solved: Solved,
     draws: int,

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -24,7 +25,7 @@ def draw(
     normal copula: exact for normal quantities, the rank correlation of the others.
     """
     out = np.empty((len(inputs), size))
-    standard: Array | None = None
+    standard: Any = None
     if correlation is not None and not np.array_equal(correlation, np.eye(len(inputs))):
         values, vectors = np.linalg.eigh(correlation)
         root = vectors * np.sqrt(np.clip(values, 0.0, None))

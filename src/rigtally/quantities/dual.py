@@ -36,10 +36,10 @@ class Dual:
         return self.scaled(-self.value, -1.0)
 
     def __sub__(self, other: Any) -> Dual:
-        return self + -1.0 * other
+        return self.__add__(-1.0 * other)
 
     def __rsub__(self, other: Any) -> Dual:
-        return -self + other
+        return self.__neg__().__add__(other)
 
     def __mul__(self, other: Any) -> Dual:
         if isinstance(other, Dual):
