@@ -10,7 +10,7 @@ import numpy as np
 
 BEGIN = datetime.datetime(2024, 3, 5, 23, 59, 59, 200000)
 ROWS = 240
-INTERVAL = 0.01
+INTERVAL = 0.0125
 
 
 def record() -> list[tuple[float, float, float, float]]:
@@ -24,7 +24,7 @@ def record() -> list[tuple[float, float, float, float]]:
         p = round(101.325 + 60.0 * np.sin(k / 9.0) + rng.normal(0, 0.4), 3)
         n = float(round(1480 + 900 * np.cos(k / 31.0)))
         z = round(rng.normal(0, 1500.0) * (1000.0 if k % 60 == 7 else 1.0), 2)
-        out.append((round(k * INTERVAL, 2), float(p), n, float(z)))
+        out.append((round(k * INTERVAL, 4), float(p), n, float(z)))
     return out
 
 
@@ -52,7 +52,7 @@ class LogForm:
 
     @property
     def ambiguous(self) -> bool:
-        """Files that two readings fit, named beforehand: a mark that also separates, not told apart by quotes."""
+        """Files that two readings fit, named beforehand: a mark that also separates, not told apart."""
         return self.separator == self.decimal and not self.quoted
 
     def cell(self, value: float, places: int) -> str:
@@ -61,12 +61,12 @@ class LogForm:
 
     def stamp(self, seconds: float) -> list[str]:
         moment = BEGIN + datetime.timedelta(seconds=seconds)
-        fraction = f"{moment.microsecond // 1000:03d}"
+        fraction = f"{moment.microsecond // 100:04d}"
         clock = f"{moment:%H:%M:%S}{self.decimal}{fraction}"
         if self.stamps == "seconds":
-            return [self.cell(seconds, 2)]
+            return [self.cell(seconds, 4)]
         if self.stamps == "milliseconds":
-            return [self.cell(1000 * seconds, 0)]
+            return [self.cell(1000 * seconds, 1)]
         if self.stamps == "iso":
             return [f"{moment:%Y-%m-%dT%H:%M:%S}.{fraction}"]
         if self.stamps == "iso-comma":
@@ -83,21 +83,23 @@ class LogForm:
 
     def heading(self) -> list[str]:
         time = {"seconds": ("t", "s"), "milliseconds": ("t", "ms"), "two-columns": ("", ""), "none": ("", "")}
-        names = [("p", "kPa"), ("n", "rpm"), ("T", "°C")]
+        channels = [("p", "kPa"), ("n", "rpm"), ("T", "°C")]
         stamp = [time[self.stamps]] if self.stamps in ("seconds", "milliseconds") else []
         if self.stamps == "two-columns":
             stamp = [("date", ""), ("time", "")]
         elif not stamp and self.stamps != "none":
             stamp = [("time", "")]
-        every = [*stamp, *names]
+        every = [*stamp, *channels]
         join = self.separator.join
         if self.preamble in ("bracketed", "commented"):
             line = join(f"{n}[{u}]" if u else n for n, u in every)
             return [line] if self.preamble == "bracketed" else ["# bench 4", "# " + line]
         if self.preamble == "unit-row":
             return [join(n for n, _ in every), join(u or "-" for _, u in every)]
-        return ["Bench: 4", "Operator = B. Meier, night shift", "", "Sampling rate: 100 Hz", "", "Remarks follow",
-                join(f"{n} [{u}]" if u and self.separator != " " else f"{n}[{u}]" if u else n for n, u in every)]  # fmt: skip
+        blank = "" if self.separator == " " else " "
+        names = join(f"{n}{blank}[{u}]" if u else n for n, u in every)
+        above = ["Bench: 4", "Operator = B. Meier, night shift", "", "Sampling rate: 80 Hz", "", "Notes:"]
+        return [*above, names]
 
     def text(self) -> str:
         lines = self.heading()
@@ -128,10 +130,8 @@ def forms() -> Iterator[LogForm]:
                     inside = separator in (decimal, thousands) or (separator == "," and stamp == "iso-comma")
                     quoted = inside or (separator == " " and stamp in ("iso-comma", "dotted"))
                     ends = "\r\n" if turn % 3 == 0 else "\n"
-                    yield LogForm(
-                        separator, decimal, thousands, encodings[turn % 4], preambles[turn // 4 % 4], stamp, ends,
-                        quoted,
-                    )  # fmt: skip
+                    encoding, preamble = encodings[turn % 4], preambles[turn // 4 % 4]
+                    yield LogForm(separator, decimal, thousands, encoding, preamble, stamp, ends, quoted)
                     turn += 1
     # without quotes the decimal comma separates, too
     for encoding in encodings:

@@ -7,9 +7,9 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from log_forms import INTERVAL, ROWS, LogForm, forms, record
 
 import rigtally as rt
+from log_forms import INTERVAL, ROWS, LogForm, forms, record
 from rigtally.errors import LogError
 
 FORMS = list(forms())
@@ -24,7 +24,7 @@ def test_the_forms_are_many_and_few_are_ambiguous() -> None:
 
 @pytest.mark.parametrize("form", FORMS, ids=lambda form: form.name)
 def test_every_form_reads_to_the_same_numbers(form: LogForm, tmp_path: Path) -> None:
-    """Each form gives the record's numbers, names, units and clock, or the refusal that was named beforehand."""
+    """Each form gives the record's numbers, names, units and clock, or the refusal named beforehand."""
     path = tmp_path / "log.csv"
     path.write_bytes(form.bytes())
     if form.ambiguous:

@@ -153,12 +153,9 @@ def _candidate(
         return None
     count = Counter(len(each) for each in like.values()).most_common(1)[0][0]
     rows = [row for row, each in like.items() if len(each) == count]
-    first = _first_row(kinds, rows, count)
+    columns = tuple(_column_kind([like[row][place] for row in rows]) for place in range(count))
+    first = _first_row(lines, kinds, columns)
     rows = [row for row in rows if row >= first]
-    columns = tuple(_column_kind([kinds[row][place] for row in rows]) for place in range(count))
-    while len(rows) > 1 and _speaks(kinds[first], columns):
-        rows = rows[1:]
-        first = rows[0]
     if "number" not in columns or "mixed" in columns:
         return None
     inside = [each for row, each in kinds.items() if row >= first]
@@ -178,17 +175,47 @@ def _like_data(kinds: Sequence[str]) -> bool:
     return readable >= 1 and 2 * readable >= len(known)
 
 
-def _first_row(kinds: dict[int, list[str]], rows: Sequence[int], count: int) -> int:
-    """Up from the middle row, over damaged rows but not over words, to the first row."""
-    wanted = set(rows)
-    first = rows[len(rows) // 2]
+def _first_row(lines: Lines, kinds: dict[int, list[str]], columns: Sequence[str]) -> int:
+    """The first row that fits, or a damaged one that stands between it and what stands above.
+
+    Raises
+    ------
+    LogError
+        code "two-tables": rows above the names.
+    """
+    fits = [row for row, each in kinds.items() if _fits(each, columns)]
+    names = [
+        row
+        for row, each in kinds.items()
+        if len(each) == len(columns) > 1 and all(known == "words" for known in each)
+    ]
+    below = [row for row in names if fits and fits[0] < row and not lines.comment(row)]
+    if below and sum(row < below[-1] for row in fits) > 1:
+        raise LogError(
+            f"rows stand above and below the names {lines[below[-1]][:60]!r}",
+            where=lines.where(below[-1]),
+            do="cut the file into one table each",
+            code="two-tables",
+        )
+    first = next((row for row in fits if not below or row > below[-1]), next(iter(kinds)))
     for row in reversed([row for row in kinds if row < first]):
+        if lines.comment(row):
+            continue
         each = kinds[row]
-        if row in wanted:
-            first = row
-        elif all(known in ("words", "missing") for known in each) or abs(len(each) - count) > 2:
+        damaged = _like_data(each) and max(2, len(columns) - 1) <= len(each) <= len(columns) + 2
+        if not damaged or each[0] == "words":
             break
+        first = row
     return first
+
+
+def _fits(kinds: Sequence[str], columns: Sequence[str]) -> bool:
+    """Every cell is of its column's kind, or missing; not all are."""
+    return (
+        len(kinds) == len(columns)
+        and all(a in (b, "missing") or b in ("words", "missing") for a, b in zip(kinds, columns, strict=True))
+        and any(each in _READABLE for each in kinds)
+    )
 
 
 def _column_kind(kinds: Sequence[str]) -> str:
@@ -205,14 +232,6 @@ def _column_kind(kinds: Sequence[str]) -> str:
             return "number"
         return "mixed"
     return best
-
-
-def _speaks(kinds: Sequence[str], columns: Sequence[str]) -> bool:
-    """A line above the rows that names them: a word where a number should stand first."""
-    for each, column in zip(kinds, columns, strict=True):
-        if column in _READABLE:
-            return each == "words"
-    return False
 
 
 def _elsewhere(lines: Lines, first: int) -> list[int]:

@@ -348,8 +348,11 @@ class _Body:
             for row, cell in enumerate(cells):
                 if cell not in distinct:
                     bare = str(cell).strip()
-                    distinct[cell] = bool(pattern.fullmatch(bare)) or bare.lower() in MISSING
-                    distinct[cell] |= bare in self.missing or kind(bare) == "missing"
+                    gap = bare in self.missing or kind(bare) == "missing"
+                    if gap and cell not in self.missing:
+                        self.missing.append(str(cell))
+                    # only plain blanks around a number are none of its own
+                    distinct[cell] = gap or bool(pattern.fullmatch(str(cell).strip(" \t")))
                 if not distinct[cell]:
                     found.append((row, str(cell)))
             if found:

@@ -59,6 +59,7 @@ def read_hdf5(
             columns = [column for leaf in chosen for column in _columns(leaf, chosen, file)]
             metadata = _metadata(stream, chosen)
             stated = _rate(stream, chosen, file)
+            kinds = sorted({_shape(leaf) for leaf in chosen})
     except (OSError, RuntimeError, KeyError, ValueError, TypeError, OverflowError, MemoryError) as fault:
         raise LogError(
             f"the HDF5 file cannot be read: {str(fault)[:160]}",
@@ -67,7 +68,6 @@ def read_hdf5(
             code="unreadable",
         ) from None
     paths = ", ".join(leaf.path for leaf in chosen[:6]) + (", …" if len(chosen) > 6 else "")
-    kinds = {_shape(leaf) for leaf in chosen}
     provenance = Provenance(file, _sha256(name), None, (f"HDF5, {' and '.join(kinds)}: {paths}",), metadata)
     if is_response(columns):
         return to_response(columns, units, provenance)

@@ -63,11 +63,12 @@ def walk(group: Any, where: str) -> Iterator[Leaf]:
         if info.addr in seen:
             continue
         seen.add(info.addr)
-        for name in sorted(here, reverse=True):
+        below = []
+        for name in sorted(here):
             if not isinstance(here.get(name, getlink=True), h5py.HardLink):
                 continue
             found = here.get(name)
-            if len(seen) + len(stack) > OBJECT_LIMIT:
+            if len(seen) + len(stack) + len(below) > OBJECT_LIMIT:
                 raise LogError(
                     f"the file holds more than {OBJECT_LIMIT} objects",
                     where=where,
@@ -75,9 +76,10 @@ def walk(group: Any, where: str) -> Iterator[Leaf]:
                     code="too-large",
                 )
             if isinstance(found, h5py.Group):
-                stack.append(found)
+                below.append(found)
             elif isinstance(found, h5py.Dataset) and _may_hold(found):
                 yield Leaf(found.name or name, found, attributes(found))
+        stack.extend(reversed(below))
 
 
 def _may_hold(dataset: Any) -> bool:

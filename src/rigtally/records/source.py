@@ -190,6 +190,11 @@ def _decoded(raw: memoryview, name: str, encoding: str | None) -> tuple[memoryvi
     try:
         codecs.decode(raw, "utf-8")
     except UnicodeDecodeError:
+        # a few damaged bytes among signs of two and more bytes leave the text what it is
+        text = codecs.decode(raw, "utf-8", "replace")
+        damaged = text.count("\ufffd")
+        if damaged <= sum(sign > "\x7f" for sign in text) - damaged:
+            return _checked(memoryview(text.encode()), name), f"UTF-8 ({damaged} damaged signs)"
         return _from(raw, "cp1252", name), "CP1252"
     return _checked(raw, name), "UTF-8"
 

@@ -92,9 +92,10 @@ def split_name(text: str) -> tuple[str, str | None]:
 
 
 def is_unit_row(cells: list[str]) -> bool:
-    """Whether a row of cells states units and nothing else."""
+    """Whether a row of cells states units (a few may be ones that are not known)."""
     bare = [cell.strip().strip("[]()").strip() for cell in cells]
     real = [cell for cell in bare if cell not in NO_UNIT]
     if not real:
         return bool(cells) and all(cell.strip() for cell in cells)
-    return all(known(cell) is not None or cell in AMBIGUOUS for cell in real)
+    units = sum(known(cell) is not None or cell in AMBIGUOUS for cell in real)
+    return units > 0.5 * len(real)
