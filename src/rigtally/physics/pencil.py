@@ -129,7 +129,9 @@ class Pencil:
         poles = np.where(size < 1e-11 * max(1.0, np.median(size)) * 1e-2, 0.0, poles)
         poles = np.where(np.abs(poles.imag) < 1e-11 * size, poles.real, poles)
         order = np.lexsort((poles.imag, np.round(size, 13)))
-        return Modes(poles[order] * self.omega, (y / weight)[:, order], right[:, order])
+        sorted_poles = np.asarray(poles[order] * self.omega, dtype=np.complex128)
+        left = np.asarray((y / weight)[:, order], dtype=np.complex128)
+        return Modes(sorted_poles, left, np.asarray(right[:, order], dtype=np.complex128))
 
     def residues(self, modes: Modes) -> ComplexArray:
         """(modes, q, r): G(s) = Σ R/(s − p) + …, without the drives' and readings' own powers of s."""

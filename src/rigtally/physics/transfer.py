@@ -65,6 +65,7 @@ class Transfer:
 
     def __init__(self, network: Network, expansion: Expansion, nominal: Array) -> None:
         den, nums, removed = _aligned(network, expansion)
+        self.polynomials = (den, nums)
         self.shape = (len(nums), len(nums[0]))
         self.raw_degree = max(s_power(k) for k in den)
         _refuse_improper(network, nums, self.raw_degree)

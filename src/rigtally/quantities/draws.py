@@ -51,8 +51,8 @@ def _from_standard(x: Uncertain, z: Array) -> Array:
     from scipy import special
 
     if x.distribution == "rectangular":
-        out: Array = x.value + math.sqrt(3.0) * x.u * (2.0 * special.ndtr(z) - 1.0)
-        return out
+        uniform: Array = x.value + math.sqrt(3.0) * x.u * (2.0 * special.ndtr(z) - 1.0)
+        return uniform
     if x.distribution == "lognormal":
         return _lognormal(x, z)
     if math.isfinite(x.dof):
