@@ -275,7 +275,7 @@ def test_day_or_month_first_matters_only_over_days(write: Write) -> None:
 
 def test_time_without_unit_in_whole_numbers_is_refused(write: Write) -> None:
     """0, 1, 2 … may be seconds, milliseconds or rows; the unit or the rate settles it."""
-    path = write("time;p\n" + rows("{k};{p:.3f}"))
+    path = write("time;p\n" + rows("{k};{p:.4f}"))
     assert refusal(path).code == "time-unit"
     assert rt.read(path, units={"time": "ms"}).interval == pytest.approx(1e-3)
     assert rt.read(path, rate="1 kHz").interval == pytest.approx(1e-3)
@@ -291,7 +291,7 @@ def test_a_temperature_named_capital_t_is_no_time(write: Write) -> None:
 
 def test_rate_from_the_preamble(write: Write) -> None:
     """A stated rate with a unit stands in for a time column; without one it is not guessed."""
-    body = "p;q\n" + rows("{p:.3f};{q:.3f}")
+    body = "p;q\n" + rows("{p:.4f};{q:.4f}")
     assert rt.read(write("Sampling rate: 2.5 kHz\n" + body)).interval == pytest.approx(4e-4)
     assert rt.read(write("Sampling interval [ms]: 0.4\n" + body)).interval == pytest.approx(4e-4)
     assert refusal(write("Sampling rate: 2500\n" + body)).code == "no-clock"

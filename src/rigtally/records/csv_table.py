@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import io
-import re
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -12,21 +11,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigtally.errors import LogError
-from rigtally.records.csv_cells import HIGH_COMMAS, MISSING, SPACES, kind, number_pattern, split
+from rigtally.records.csv_cells import HIGH_COMMAS, MISSING, SPACES, kind, number_pattern
 from rigtally.records.csv_layout import Layout
 from rigtally.records.csv_lines import Lines
+from rigtally.records.csv_rows import find_rows
 from rigtally.records.record import Fault
 
 Array = NDArray[np.float64]
 Bool = NDArray[np.bool_]
 
-_BLOCK = 1 << 22
 # Unreadable cells beyond this share of a column are a misunderstanding, not damage.
 DAMAGE = 0.02
-_SUMMARY = re.compile(
-    r"\W*(mean|average|avg|min|max|minimum|maximum|total|sum|std|stdev|rms|median|end|count|mittel\w*)\b",
-    re.IGNORECASE,
-)
 _SPELLINGS = sorted(
     {form for word in MISSING for form in (word, word.upper(), word.capitalize())} | {"NaN", "#N/A"}
 )
@@ -77,7 +72,7 @@ def read_table(
     Disagreement
         Where cells speak for another reading of the marks.
     """
-    rows, last, footer = _rows(lines, layout)
+    rows, last, footer = find_rows(lines, layout)
     numbers = [place for place in wanted if layout.kinds[place] in ("number", "missing")]
     texts = [place for place in wanted if layout.kinds[place] in ("stamp", "date", "clock")]
     body = _Body(lines, layout, rows, last, [*_SPELLINGS, *missing], progress)
@@ -143,123 +138,6 @@ def _accounted(values: Array, bad: list[tuple[int, str]]) -> tuple[Array, tuple[
             Fault("missing", f"{lost} cells hold no value", lost, tuple(int(row) for row in gaps[:8]))
         )
     return values, tuple(found)
-
-
-def _rows(lines: Lines, layout: Layout) -> tuple[NDArray[np.int64], int, tuple[str, ...]]:
-    """Line numbers of the rows; the line after the last; the footer's lines."""
-    counts = _cell_counts(lines, layout)
-    good = counts == layout.count
-    if layout.count == 1:
-        good &= lines.ends[layout.first :] > lines.begins[layout.first :]
-    last = int(np.flatnonzero(good)[-1]) + 1 if good.any() else 0
-    while last > 1 and _closes(lines[layout.first + last - 1]):
-        last -= 1
-        while last > 1 and not good[last - 1]:
-            last -= 1
-    footer = list(range(layout.first + last, min(len(lines), layout.first + last + 60)))
-    rest = len(lines) - layout.first - last
-    _refuse_rows_below(lines, layout, footer, rest)
-    wrong = np.flatnonzero(~good[:last])
-    # blank and comment lines between the rows are no rows
-    dropped = 0
-    for place in wrong[:20_000]:
-        row = layout.first + int(place)
-        if lines.comment(row) or (layout.count > 1 and lines.blank(row)):
-            dropped += 1
-            continue
-        if layout.count == 1 and lines.blank(row):
-            good[place] = True
-            dropped += 1
-            continue
-        raise LogError(
-            f"the line has {int(counts[place])} cells, the others have {layout.count}: {lines[row][:60]!r}",
-            where=lines.where(row),
-            do="mend the line or take it out",
-            code="ragged",
-        )
-    if dropped < wrong.size:
-        raise LogError(
-            f"{wrong.size} lines have not {layout.count} cells",
-            where=lines.source.name,
-            do="state --separator",
-            code="ragged",
-        )
-    rows = np.flatnonzero(good[:last]) + layout.first
-    texts = tuple(lines[row] for row in footer if not lines.blank(row))
-    return rows, layout.first + last, texts
-
-
-def _closes(line: str) -> bool:
-    return bool(_SUMMARY.match(line))
-
-
-def _refuse_rows_below(lines: Lines, layout: Layout, footer: Sequence[int], rest: int) -> None:
-    """What stands below the rows must not be rows cut short or run together."""
-    for row in footer:
-        cells = split(lines[row], layout.separator or ",")
-        kinds = [kind(cell) for cell in cells if cell]
-        readable = sum(each in ("number", "stamp", "date", "clock") for each in kinds)
-        if lines.comment(row) or not kinds or kinds[0] == "words":
-            continue
-        if 2 * readable >= len(kinds):
-            raise LogError(
-                f"the line has {len(cells)} cells, the others have {layout.count}: {lines[row][:60]!r}",
-                where=lines.where(row),
-                do="mend the line or take it out",
-                code="ragged",
-            )
-    if rest > 60 and rest > 0.2 * (len(lines) - layout.first):
-        raise LogError(
-            f"{rest} lines below the rows are read as no rows",
-            where=lines.where(footer[0]),
-            do="state --separator, or cut the file into one table each",
-            code="two-tables",
-        )
-
-
-def _cell_counts(lines: Lines, layout: Layout) -> NDArray[np.int64]:
-    """(lines,) how many cells each line from the first row on has."""
-    begins, ends = lines.begins[layout.first :], lines.ends[layout.first :]
-    if layout.count == 1 and layout.separator != " ":
-        return np.ones(begins.size, dtype=np.int64)
-    counts = np.empty(begins.size, dtype=np.int64)
-    row = 0
-    while row < begins.size:
-        stop = int(np.searchsorted(ends, begins[row] + _BLOCK, side="left"))
-        stop = max(stop, row + 1)
-        block = lines.signs[int(begins[row]) : int(ends[stop - 1])]
-        local = begins[row:stop] - begins[row]
-        marks = _separators(block, layout.separator, local, lines, layout.first + row)
-        edges = np.searchsorted(marks, np.append(local, block.size + 1))
-        counts[row:stop] = np.diff(edges) + (0 if layout.separator == " " else 1)
-        row = stop
-    return counts
-
-
-def _separators(
-    block: NDArray[np.uint8], separator: str, begins: NDArray[np.int64], lines: Lines, first: int
-) -> NDArray[np.int64]:
-    """Positions of the separators outside quotes; with blanks, of the beginnings of the cells."""
-    quotes = np.flatnonzero(block == 34)
-    if separator == " ":
-        space = (block == 32) | (block == 9) | (block == 10) | (block == 13)
-        before = np.empty_like(space)
-        before[0] = True
-        before[1:] = space[:-1]
-        marks = np.flatnonzero(~space & before)
-    else:
-        marks = np.flatnonzero(block == ord(separator))
-    if quotes.size:
-        odd = np.flatnonzero(np.diff(np.searchsorted(quotes, np.append(begins, block.size))) % 2)
-        if odd.size:
-            raise LogError(
-                "a quote is not closed on its line",
-                where=lines.where(first + int(odd[0])),
-                do="close the quote",
-                code="quotes",
-            )
-        marks = marks[np.searchsorted(quotes, marks) % 2 == 0]
-    return marks
 
 
 class _Body:
@@ -365,15 +243,26 @@ class _Body:
         other = [(row, cell) for row, cell in found if kind(cell.strip()) in ("number", "date")]
         if other and not weighed:
             raise Disagreement([int(self.rows[row]) for row, _ in other[:200]], other[0][1], place)
+        # float() takes more than a number's digits and signs: such a cell cannot be told from its value
+        lookalike = [(row, cell) for row, cell in found if _python_reads(cell)]
         words = sum(kind(cell.strip()) == "words" for _, cell in found)
-        if len(found) - words > max(3, DAMAGE * count) or len(found) > max(3, 0.5 * count):
-            row, cell = found[0]
+        many = len(found) - words > max(3, DAMAGE * count) or len(found) > max(3, 0.5 * count)
+        if many or lookalike:
+            row, cell = (lookalike or found)[0]
             raise LogError(
                 f"{len(found)} cells of the column are no numbers, such as {cell!r}",
                 where=f"{self.lines.where(int(self.rows[row]))}, column {place + 1}",
                 do="take the text out, or name the channels to read",
                 code="unreadable-cell",
             )
+
+
+def _python_reads(cell: str) -> bool:
+    try:
+        float(cell)
+    except ValueError:
+        return False
+    return True
 
 
 class _Stream(io.RawIOBase):

@@ -63,7 +63,7 @@ def walk(group: Any, where: str) -> Iterator[Leaf]:
         if info.addr in seen:
             continue
         seen.add(info.addr)
-        below = []
+        below: list[Any] = []
         for name in sorted(here):
             if not isinstance(here.get(name, getlink=True), h5py.HardLink):
                 continue

@@ -202,7 +202,7 @@ def _decoded(raw: memoryview, name: str, encoding: str | None) -> tuple[memoryvi
 def _from(raw: memoryview, encoding: str, name: str) -> memoryview:
     try:
         text = codecs.decode(raw, encoding)
-    except (UnicodeError, ValueError) as fault:
+    except (UnicodeError, ValueError, zlib.error) as fault:
         at = getattr(fault, "start", None)
         place = "" if at is None else f" at byte {at}"
         raise LogError(

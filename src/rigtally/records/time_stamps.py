@@ -105,7 +105,10 @@ def _zone(column: Any) -> Array:
 
 
 def _past_midnight(clock: Array) -> Array:
-    falls = np.diff(clock) < -0.5 * DAY
+    """One day more where the next row follows shortly after midnight; other falls are left to be refused."""
+    steps = np.diff(clock)
+    usual = float(np.median(steps)) if steps.size else 0.0
+    falls = (steps < -0.5 * DAY) & (steps + DAY <= max(100.0 * usual, 60.0))
     return clock + DAY * np.concatenate([[0.0], np.cumsum(falls)])
 
 
