@@ -68,7 +68,9 @@ def _examined(channel: Channel, record: Record) -> Channel:
     if known.sum() < 8:
         return replace(channel, faults=tuple(faults))
     if not math.isfinite(channel.resolution):
-        channel = replace(channel, resolution=abs(channel.factor) * smallest_step(channel.in_written_unit))
+        step = abs(channel.factor) * smallest_step(channel.in_written_unit)
+        # ten digits: the conversion's round-off is no part of it
+        channel = replace(channel, resolution=float(f"{step:.10g}"))
     low, high = float(np.nanmin(samples)), float(np.nanmax(samples))
     if low == high:
         faults.append(
@@ -95,7 +97,11 @@ _KINDS = frozenset(
 def _missing(channel: Channel, count: int) -> Fault:
     rows = np.flatnonzero(~np.isfinite(channel.samples))
     share = count / channel.samples.size
-    return Fault("missing", f"{count} samples missing ({share:.2g}), left out", count, _first(rows), share)
+    return Fault("missing", f"{_samples(count)} missing ({share:.2g}), left out", count, _first(rows), share)
+
+
+def _samples(count: int) -> str:
+    return f"{count} sample{'' if count == 1 else 's'}"
 
 
 def _with_unit(number: float, channel: Channel) -> str:
@@ -137,7 +143,7 @@ def _find_clipping(channel: Channel, sigma: float, low: float, high: float) -> t
             faults.append(
                 Fault(
                     "clipped",
-                    f"{count} samples ({share:.2g}) stand at the {word} end of the range, "
+                    f"{_samples(count)} ({share:.2g}) at the {word} end of the range, "
                     f"{_with_unit(edge, channel)}: the true values lie beyond it",
                     count,
                     _first(np.flatnonzero(mask)),
@@ -183,7 +189,7 @@ def _find_stuck(channel: Channel, sigma: float) -> list[Fault]:
     longest = int(np.argmax(np.where(long, lengths, 0)))
     value = _with_unit(float(samples[starts[longest]]), channel)
     text = (
-        f"{count} samples in {int(long.sum())} stretches hold one value while the rest is noisy; the "
+        f"{count} samples in {int(long.sum())} stretch(es) hold one value while the rest is noisy; the "
         f"longest, {int(lengths[longest])} samples at {value}, from sample {int(starts[longest])}"
     )
     return [Fault("stuck", text, count, _first(starts[long]), float(lengths[longest]))]
@@ -230,7 +236,7 @@ def _find_spikes(channel: Channel) -> list[Fault]:
         return []
     largest = float(np.max(np.abs(bend[spikes - 1])))
     text = (
-        f"{spikes.size} single samples stand far off both neighbours, by up to "
+        f"{_samples(spikes.size)} far off both neighbours, by up to "
         f"{_with_unit(largest, channel)} ({largest / scale * math.sqrt(1.5):.3g} times the noise)"
     )
     return [Fault("spikes", text, int(spikes.size), _first(spikes), largest)]

@@ -77,14 +77,9 @@ def level(
         at = 0.5 * (known.size - 1) * (1.0 if side == "last" else -1.0)
         value, share = mean + slope * at, share + length * at * at / spread
     u = scatter * math.sqrt(share)
-    # scatter well above the resolution averages the rounding out (dithering)
-    held = rounding * math.exp(-2.0 * (math.pi * scatter * rounding_inverse(resolution)) ** 2)
+    # scatter well above the resolution averages the rounding out: its mean error falls as exp(−2 (π σ/q)²)
+    held = rounding * math.exp(-2.0 * (math.pi * scatter / resolution) ** 2) if rounding > 0.0 else 0.0
     return Uncertain(value, math.hypot(u, held), unit, dof=max(worth - 1.0, 1.0))
-
-
-def rounding_inverse(resolution: float) -> float:
-    """1/q, or 0 where no resolution is known."""
-    return 1.0 / resolution if math.isfinite(resolution) and resolution > 0 else 0.0
 
 
 def histogram_levels(samples: Array, sigma: float) -> tuple[float, float]:

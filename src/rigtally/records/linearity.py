@@ -108,10 +108,13 @@ def _compare(name: str, events: list[Event]) -> Linearity:
     for feature in FEATURES:
         found = [(event, value) for event in events if (value := _feature(event, name, feature)) is not None]
         if len(found) >= 3:
-            movements.append(_movement(feature, [e for e, _ in found], [v for _, v in found]))
+            sizes_found = [abs(event.size) for event, _ in found]
+            movements.append(
+                movement_of(feature, sizes_found, [e.direction for e, _ in found], [v for _, v in found])
+            )
     hysteresis = _hysteresis(name, events)
     limits = (float(sizes.min()), float(sizes.max()))
-    findings = [text for movement in movements for text in _findings(name, movement, limits)]
+    findings = [text for movement in movements for text in movement_findings(name, movement, limits)]
     if hysteresis.determined and abs(hysteresis.value) > coverage_factor(0.99, hysteresis.dof) * hysteresis.u:
         width = _pair(hysteresis)
         findings.append(
@@ -138,9 +141,28 @@ def _known(u: float) -> float:
     return u if math.isfinite(u) else 0.0
 
 
-def _movement(feature: str, events: list[Event], values: list[Uncertain]) -> Movement:
-    size = np.array([abs(event.size) for event in events])
-    direction = np.array([0.5 * event.direction for event in events])
+def movement_of(
+    feature: str,
+    sizes: Sequence[float],
+    directions: Sequence[int],
+    values: Sequence[Uncertain],
+    tested: int = len(FEATURES),
+) -> Movement:
+    """How one feature moves with size and direction.
+
+    Parameters
+    ----------
+    sizes : sequence of float
+        Moduli, one for each value.
+    directions : sequence of int
+        +1 or −1.
+    values : sequence of Uncertain
+        With u > 0.
+    tested : int
+        Features that are tested beside this one, among which the chance of a false finding is shared.
+    """
+    size = np.array(sizes, dtype=float)
+    direction = 0.5 * np.array(directions, dtype=float)
     y = np.array([value.value for value in values])
     u = np.array([value.u for value in values])
     unit = values[0].unit
@@ -169,7 +191,7 @@ def _movement(feature: str, events: list[Event], values: list[Uncertain]) -> Mov
         key: Uncertain(float(solved[k]), math.sqrt(float(covariance[k, k])), unit, dof=dof)
         for k, key in enumerate(names)
     }
-    limit = coverage_factor(1.0 - FALSE_ALARM / (2 * len(FEATURES)), dof)
+    limit = coverage_factor(1.0 - FALSE_ALARM / (2 * tested), dof)
 
     def matters(key: str) -> bool:
         return key in found and abs(found[key].value) > limit * found[key].u
@@ -184,7 +206,8 @@ def _movement(feature: str, events: list[Event], values: list[Uncertain]) -> Mov
     )
 
 
-def _findings(name: str, movement: Movement, limits: tuple[float, float]) -> list[str]:
+def movement_findings(name: str, movement: Movement, limits: tuple[float, float]) -> list[str]:
+    """Sentences for a movement that matters, with its amount, its share and the range of sizes."""
     out = []
     what = movement.feature.replace("_", " ")
     mean = movement.mean.value
