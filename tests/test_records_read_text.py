@@ -44,9 +44,10 @@ def rows(pattern: str, count: int = 60) -> str:
 def test_the_preamble_is_kept(write: Write) -> None:
     """Metadata in whatever form, provenance with hash and lines, two lines on how it was read."""
     path = write(
-        "Bench log\nOperator: M. Roth\nGain = 2.5\nSerial no.;4711\n\n\nt [s];p [bar]\n" + rows("{t:.2f};{p:.3f}")
+        "Bench log\nOperator: M. Roth\nGain = 2.5\nSerial no.;4711\n\n\nt [s];p [bar]\n"
+        + rows("{t:.2f};{p:.3f}")
         + "\nEnd of log\nChecksum: 12\n"
-    )  # fmt: skip
+    )
     provenance = rt.read(path).provenance
     assert provenance.metadata["Operator"] == "M. Roth"
     assert provenance.metadata["Gain"] == "2.5"
@@ -69,11 +70,19 @@ def test_preambles_of_any_length(length: int, write: Write) -> None:
 @pytest.mark.parametrize(
     ("heading", "unit", "factor"),
     [
-        ("p [kPa]", "Pa", 1e3), ("p (kPa)", "Pa", 1e3), ("p / kPa", "Pa", 1e3), ("p/kPa", "Pa", 1e3),
-        ("p in kPa", "Pa", 1e3), ("p [bar(g)]", "Pa", 1e5), ("p [Nm]", "N*m", 1.0), ("p [m/s²]", "m/s^2", 1.0),
-        ("p [PSI]", "Pa", 6894.757293168361), ("p [-]", "", 1.0), ("p [%]", "", 0.01),
+        ("p [kPa]", "Pa", 1e3),
+        ("p (kPa)", "Pa", 1e3),
+        ("p / kPa", "Pa", 1e3),
+        ("p/kPa", "Pa", 1e3),
+        ("p in kPa", "Pa", 1e3),
+        ("p [bar(g)]", "Pa", 1e5),
+        ("p [Nm]", "N*m", 1.0),
+        ("p [m/s²]", "m/s^2", 1.0),
+        ("p [PSI]", "Pa", 6894.757293168361),
+        ("p [-]", "", 1.0),
+        ("p [%]", "", 0.01),
     ],
-)  # fmt: skip
+)
 def test_units_in_headings(heading: str, unit: str, factor: float, write: Write) -> None:
     """A unit in brackets, after a stroke or after "in" is read, and kept as written."""
     channel = rt.read(write(f"t [s];{heading}\n" + rows("{t:.2f};{p:.3f}"))).channel("p")
@@ -106,9 +115,29 @@ def test_a_stated_unit_overrides(write: Write) -> None:
 
 
 @pytest.mark.parametrize(
-    "gap", ["", "NaN", "nan", "N/A", "#N/A", "null", "NULL", "none", "-", "--", "---", "?", "ERR", "#DIV/0!",
-            "1.#QNAN", "OVL", "missing", "9.91E37", "inf"],
-)  # fmt: skip
+    "gap",
+    [
+        "",
+        "NaN",
+        "nan",
+        "N/A",
+        "#N/A",
+        "null",
+        "NULL",
+        "none",
+        "-",
+        "--",
+        "---",
+        "?",
+        "ERR",
+        "#DIV/0!",
+        "1.#QNAN",
+        "OVL",
+        "missing",
+        "9.91E37",
+        "inf",
+    ],
+)
 def test_gaps_in_many_spellings(gap: str, write: Write) -> None:
     """What stands for "no value" is NaN, counted and named; nothing else moves."""
     lines = rows("{t:.2f};{p:.3f};{q:.3f}").splitlines()
@@ -151,12 +180,15 @@ def test_lines_between_the_rows(write: Write) -> None:
 @pytest.mark.parametrize(
     ("line", "code"),
     [
-        ("5.10,1.5,2.5,9.5", "ragged"), ("5.10,1.5", "ragged"), ('5.10,"1.5,2.5', "quotes"),
-        ("5.10.3,1.5,2.5", "unreadable"), ("noon,1.5,2.5", "unreadable"),
+        ("5.10,1.5,2.5,9.5", "ragged"),
+        ("5.10,1.5", "ragged"),
+        ('5.10,"1.5,2.5', "quotes"),
+        ("5.10.3,1.5,2.5", "unreadable"),
+        ("noon,1.5,2.5", "unreadable"),
     ],
-)  # fmt: skip
+)
 def test_a_damaged_line_is_named(line: str, code: str, write: Write) -> None:
-    """A line that cannot be a row is refused with its number; a time that is no number is left out by name."""
+    """A line that cannot be a row is refused by number; a time that is no number is left out by name."""
     lines = rows("{t:.2f},{p:.3f},{q:.3f}").splitlines()
     lines[20] = line
     path = write("t [s],p [kPa],q [kPa]\n" + "\n".join(lines) + "\n")
@@ -237,14 +269,20 @@ def test_decimal_comma_between_commas_is_never_taken_as_columns(write: Write) ->
 @pytest.mark.parametrize(
     ("heading", "pattern", "interval"),
     [
-        ("time [ms],p", "{k},{p:.3f}", 1e-3), ("time_us,p", "{k},{p:.3f}", 1e-6), ("t,p", "{t:.2f},{p:.3f}", 0.25),
-        ("elapsed time (min),p", "{t:.2f},{p:.3f}", 15.0), ("timestamp,p", "170000{k:04d},{p:.3f}", 1.0),
-        ("timestamp,p", "1700000000{k:03d},{p:.3f}", 1e-3), ("time,p", "12:30:{k:02d},{p:.3f}", 1.0),
-        ("time,p", "11:59:{k:02d} PM,{p:.3f}", 1.0), ("time,p", "2024-02-29T10:00:{k:02d}Z,{p:.3f}", 1.0),
-        ("time,p", "29/02/2024 10:00:{k:02d},{p:.3f}", 1.0), ("time,p", "3/4/2024 10:00:{k:02d},{p:.3f}", 1.0),
+        ("time [ms],p", "{k},{p:.3f}", 1e-3),
+        ("time_us,p", "{k},{p:.3f}", 1e-6),
+        ("t,p", "{t:.2f},{p:.3f}", 0.25),
+        ("elapsed time (min),p", "{t:.2f},{p:.3f}", 15.0),
+        ("timestamp,p", "170000{k:04d},{p:.3f}", 1.0),
+        ("timestamp,p", "1700000000{k:03d},{p:.3f}", 1e-3),
+        ("time,p", "12:30:{k:02d},{p:.3f}", 1.0),
+        ("time,p", "11:59:{k:02d} PM,{p:.3f}", 1.0),
+        ("time,p", "2024-02-29T10:00:{k:02d}Z,{p:.3f}", 1.0),
+        ("time,p", "29/02/2024 10:00:{k:02d},{p:.3f}", 1.0),
+        ("time,p", "3/4/2024 10:00:{k:02d},{p:.3f}", 1.0),
         ("time,p", "2024/2/29 10:00:{k:02d},{p:.3f}", 1.0),
     ],
-)  # fmt: skip
+)
 def test_time_in_many_forms(heading: str, pattern: str, interval: float, write: Write) -> None:
     """Seconds, milliseconds, minutes, seconds since 1970, times of day and dates."""
     found = rt.read(write(heading + "\n" + rows(pattern)))
@@ -260,8 +298,9 @@ def test_time_passes_midnight_and_zones(write: Write) -> None:
     ]
     assert rt.read(write("time;p\n" + "\n".join(lines) + "\n")).interval == 1.0
     lines = [
-        f"2024-10-27T0{2 if k < 10 else 1}:00:{k:02d}{'+02:00' if k < 10 else '+01:00'};{k}.5" for k in range(30)
-    ]  # fmt: skip
+        f"2024-10-27T0{2 if k < 10 else 1}:00:{k:02d}{'+02:00' if k < 10 else '+01:00'};{k}.5"
+        for k in range(30)
+    ]
     assert rt.read(write("time;p\n" + "\n".join(lines) + "\n")).interval == 1.0
 
 
@@ -322,11 +361,17 @@ def test_no_names_at_all(write: Write) -> None:
 @pytest.mark.parametrize(
     ("options", "code"),
     [
-        ({"separator": "x"}, "bad-option"), ({"decimal": ":"}, "bad-option"), ({"thousands": "x"}, "bad-option"),
-        ({"encoding": "nonsense"}, "encoding"), ({"header": "first"}, "bad-option"), ({"rate": "fast"}, "bad-rate"),
-        ({"time": "when"}, "no-such-channel"), ({"channels": ["x"]}, "no-such-channel"), ({"encoding": "zlib"}, "encoding"),
+        ({"separator": "x"}, "bad-option"),
+        ({"decimal": ":"}, "bad-option"),
+        ({"thousands": "x"}, "bad-option"),
+        ({"encoding": "nonsense"}, "encoding"),
+        ({"header": "first"}, "bad-option"),
+        ({"rate": "fast"}, "bad-rate"),
+        ({"time": "when"}, "no-such-channel"),
+        ({"channels": ["x"]}, "no-such-channel"),
+        ({"encoding": "zlib"}, "encoding"),
     ],
-)  # fmt: skip
+)
 def test_wrong_options_are_refused(options: dict[str, object], code: str, write: Write) -> None:
     """Each with its own code, and what to do."""
     assert refusal(write("t [s];p\n" + rows("{t:.2f};{p:.3f}")), **options).code == code
