@@ -56,8 +56,7 @@ def _from_standard(x: Uncertain, z: Array) -> Array:
     if x.distribution == "lognormal":
         return _lognormal(x, z)
     if math.isfinite(x.dof):
-        scaled: Array = x.value + x.u * special.stdtrit(x.dof, special.ndtr(z))
-        return scaled
+        return np.asarray(x.value + x.u * special.stdtrit(x.dof, special.ndtr(z)), dtype=np.float64)
     return x.value + x.u * z
 
 
