@@ -71,6 +71,17 @@ def test_clipping_is_found_on_a_noisy_response(quantum: float, edge: float) -> N
         assert np.array_equal(high, samples >= edge - 0.5 * quantum - 1e-12)
 
 
+@pytest.mark.parametrize("quantum", [0.0, 0.002])
+def test_clipping_is_found_without_noise(quantum: float) -> None:
+    """Crests cut off from a clean ring and a clean sine, as a converter coarser than the noise records them."""
+    t = np.arange(4000) * INTERVAL
+    for signal, edge in ((step_response(4000), 1.15), (np.sin(2 * np.pi * 1.7 * t), 0.8)):
+        samples = np.round(signal / quantum) * quantum if quantum else signal
+        channel = examined(np.minimum(samples, edge))
+        assert channel.full_scale == (-np.inf, edge)
+        assert examined(samples).full_scale is None
+
+
 def test_clipping_at_the_lower_end_is_found() -> None:
     """The mirror of the upper end."""
     rng = np.random.default_rng(13)

@@ -12,8 +12,9 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
+from rigtally.records.flat_tops import cut_off, equal_runs
 from rigtally.records.record import Channel, Fault, Record
-from rigtally.records.sample_noise import MEDIAN_TO_SIGMA, noise_sigma, smallest_step
+from rigtally.records.sample_noise import MEDIAN_TO_SIGMA, floor_sigma, noise_sigma, smallest_step
 from rigtally.records.spectral_faults import find_folding, find_hum
 
 Array = NDArray[np.float64]
@@ -21,6 +22,8 @@ Mask = NDArray[np.bool_]
 
 # noise over resolution from which equal neighbours are news
 VISIBLE = 0.7
+# noise over range below which a record is computed, not measured
+ROUND_OFF = 1e-6
 # chance of a false alarm of one finder on one clean channel
 FALSE_ALARM = 1e-3
 SHOWN = 8
@@ -78,14 +81,15 @@ def _examined(channel: Channel, record: Record) -> Channel:
         )
         return replace(channel, faults=tuple(faults))
     sigma = noise_sigma(samples)
-    channel, clipped = _find_clipping(channel, sigma, low, high)
+    visible = _visible(channel, sigma)
+    channel, clipped = _find_clipping(channel, sigma, low, high, visible)
     faults += clipped
-    faults += _find_stuck(channel, sigma)
+    faults += _find_stuck(channel, sigma) if visible else []
     faults += _find_spikes(channel)
     faults += _find_coarse_steps(channel, sigma, high - low)
     if record.uniform:
         faults += find_hum(samples, record.interval, channel.unit, FALSE_ALARM)
-        faults += find_folding(samples, FALSE_ALARM)
+        faults += find_folding(samples, channel.resolution, FALSE_ALARM)
     return replace(channel, faults=tuple(faults))
 
 
@@ -113,24 +117,35 @@ def _first(rows: NDArray[np.intp]) -> tuple[int, ...]:
 
 
 def _visible(channel: Channel, sigma: float) -> bool:
-    """Whether noise moves the samples by more than the resolution: equal values are then news."""
+    """Whether noise moves the samples by more than the resolution: equal values are then news.
+
+    The noise must show as a floor of the spectrum, too, and above the round-off of a computed signal.
+    """
     step = channel.resolution if math.isfinite(channel.resolution) else 0.0
-    return math.isfinite(sigma) and sigma > 0.0 and sigma >= VISIBLE * step
+    least = max(VISIBLE * step, ROUND_OFF * float(np.nanmax(channel.samples) - np.nanmin(channel.samples)))
+    if not (math.isfinite(sigma) and sigma > least):
+        return False
+    floor = floor_sigma(channel.samples)
+    return math.isnan(floor) or floor > least
 
 
-def _find_clipping(channel: Channel, sigma: float, low: float, high: float) -> tuple[Channel, list[Fault]]:
+def _find_clipping(
+    channel: Channel, sigma: float, low: float, high: float, visible: bool
+) -> tuple[Channel, list[Fault]]:
     """Samples piled up at the largest or smallest value.
 
     The density of a noisy signal falls towards its end: what stands at the end value cannot be more than the
     share of one resolution step of what stands in the half σ next to it. More than that (Poisson, one in 10⁶)
-    is a pile. Without visible noise a flat top may as well be a held command: only a stated full scale tells.
+    is a pile. Without visible noise a flat top may as well be a held command: it is taken as cut off where
+    the curves that lead to it and away from it would meet above it.
     """
     stated = channel.full_scale
     ends = [-math.inf, math.inf] if stated is None else list(stated)
-    if stated is None and _visible(channel, sigma):
+    if stated is None:
         for side, edge in ((0, low), (1, high)):
             sign = 1.0 if side else -1.0
-            if _piled(sign * channel.samples, sign * edge, sigma, channel):
+            cut = _piled(sign * channel.samples, sign * edge, sigma, channel) if visible else False
+            if cut or cut_off(sign * channel.samples, channel.resolution):
                 ends[side] = edge
     if all(math.isinf(end) for end in ends):
         return channel, []
@@ -173,8 +188,6 @@ def _find_stuck(channel: Channel, sigma: float) -> list[Fault]:
 
     p = q/(2 σ √π) is the chance that two neighbours with noise σ fall into one step q.
     """
-    if not _visible(channel, sigma):
-        return []
     samples = channel.samples
     step = channel.resolution if math.isfinite(channel.resolution) else 0.0
     chance = min(max(step / (2.0 * sigma * math.sqrt(math.pi)), 1e-3), 0.9)
@@ -195,14 +208,6 @@ def _find_stuck(channel: Channel, sigma: float) -> list[Fault]:
     return [Fault("stuck", text, count, _first(starts[long]), float(lengths[longest]))]
 
 
-def equal_runs(samples: Array) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
-    """First sample and length of each run of equal values (a NaN is a run of its own)."""
-    change = np.flatnonzero(samples[1:] != samples[:-1]) + 1
-    starts = np.concatenate([[0], change]).astype(np.intp)
-    lengths = np.diff(np.concatenate([starts, [samples.size]])).astype(np.intp)
-    return starts, lengths
-
-
 def _find_spikes(channel: Channel) -> list[Fault]:
     """Single samples far from both neighbours, which agree with each other.
 
@@ -220,6 +225,9 @@ def _find_spikes(channel: Channel) -> list[Fault]:
         return []
     step = channel.resolution if math.isfinite(channel.resolution) else 0.0
     scale = max(MEDIAN_TO_SIGMA * float(np.median(np.abs(bend[known]))), 0.4 * step)
+    if scale < 1.5 * step:
+        # the median of few values is one of them: the mean modulus does not jump
+        scale = max(scale, math.sqrt(0.5 * math.pi) * float(np.mean(np.abs(bend[known]))))
     if scale <= 0.0:
         return []
     limit = max(-float(ndtri(0.5 * FALSE_ALARM / bend.size)), 5.0) * scale

@@ -10,6 +10,7 @@ Array = NDArray[np.float64]
 # median |x| of a normal variate in standard deviations
 MEDIAN_TO_SIGMA = 1.482602218505602
 PROBE = 100_000
+FLOOR_SAMPLES = 1 << 17
 
 
 def noise_sigma(samples: Array) -> float:
@@ -33,6 +34,27 @@ def noise_sigma(samples: Array) -> float:
     if third.size < 8:
         return float("nan")
     return float(MEDIAN_TO_SIGMA * np.median(np.abs(third)) / np.sqrt(20.0))
+
+
+def floor_sigma(samples: Array) -> float:
+    """Standard deviation of the noise floor: of white noise as strong as the median of the upper half
+    spectrum.
+
+    A fast sine, or a resonance, has large third differences and yet a low floor. Power of Hann-windowed
+    noise is exponential, its median ln 2 of its mean. Coloured noise that falls with frequency reads low.
+
+    Returns
+    -------
+    float
+        NaN with fewer than 64 samples.
+    """
+    known = samples[np.isfinite(samples)][:FLOOR_SAMPLES]
+    if known.size < 64:
+        return float("nan")
+    window = np.hanning(known.size)
+    power = np.abs(np.fft.rfft((known - known.mean()) * window)) ** 2
+    upper = power[power.size // 2 : -2]
+    return float(np.sqrt(np.median(upper) / np.log(2.0) / np.sum(window**2)))
 
 
 def smallest_step(written: Array) -> float:

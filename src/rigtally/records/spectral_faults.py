@@ -48,8 +48,11 @@ def find_hum(samples: Array, interval: float, unit: str, false_alarm: float) -> 
         floor = max(float(np.median(power[side])) for side in sides if side.size) / math.log(2.0)
         bins = inside.stop - inside.start
         limit = math.log(2.0 * len(MAINS) * bins / false_alarm)
-        peer = max(0.2 * float(power[peak]), math.log(near.size / false_alarm) * floor)
-        if power[peak] <= limit * floor or float(power[near].max()) > peer:
+        # peers within an octave: harmonics of a drive, or lines of a multisine
+        wide = power[max(peak // 2, 2) : 2 * peak + 1].copy()
+        wide[max(peak - 4 - max(peak // 2, 2), 0) : peak + 5 - max(peak // 2, 2)] = 0.0
+        peer = max(0.2 * float(power[peak]), math.log(wide.size / false_alarm) * floor)
+        if power[peak] <= limit * floor or float(wide.max()) > peer:
             continue
         amplitude = 2.0 * math.sqrt(float(power[peak])) / float(window.sum())
         if amplitude > 0.3 * math.sqrt(2.0) * float(np.std(x)):
@@ -65,8 +68,10 @@ def find_hum(samples: Array, interval: float, unit: str, false_alarm: float) -> 
     return found
 
 
-def find_folding(samples: Array, false_alarm: float) -> list[Fault]:
+def find_folding(samples: Array, resolution: float, false_alarm: float) -> list[Fault]:
     """A spectrum that rises towards half the sampling rate: nothing shows an anti-alias filter.
+
+    What does not stand above the rounding to `resolution` (power q²/12) is not looked at.
 
     Mean power in the highest tenth of the band against the band from 0.6 to 0.8, over Hann segments of 1024
     samples. For white noise their ratio scatters by √(1/m₁ + 1/m₂) about 1, m the independent bins in each.
@@ -88,7 +93,10 @@ def find_folding(samples: Array, false_alarm: float) -> list[Fault]:
     scatter = math.sqrt(1.5 / blocks * (1.0 / top.size + 1.0 / middle.size))
     ratio = float(np.mean(top) / np.mean(middle)) if float(np.mean(middle)) > 0 else 0.0
     limit = max(2.0, math.exp(-float(ndtri(false_alarm)) * 1.3 * scatter))
-    if ratio <= limit:
+    rounding = (
+        resolution**2 / 12.0 * float(np.sum(np.hanning(length) ** 2)) if math.isfinite(resolution) else 0.0
+    )
+    if ratio <= limit or float(np.mean(top)) < 5.0 * rounding:
         return []
     return [
         Fault(
