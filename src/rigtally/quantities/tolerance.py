@@ -1,4 +1,4 @@
-"""A value as it is written with its tolerance: "4.00 mm ± 0.05 mm", "…, u = 0.02 mm", "…, U = 0.04 mm, k = 2".
+"""A value as it is written with its tolerance: "4.00 mm ± 0.05 mm", "…, u = 0.02 mm", "…, U = 0.04 mm".
 
 Limits are rectangular, u = half-width/√3 (JCGM 100:2008, 4.3.7); an expanded uncertainty is divided by its k
 (2 unless said); a bare value is taken as exact.
@@ -53,7 +53,7 @@ def read_quantity(
         if not _STATED.match(part):
             raise UsageError(
                 f"{key} = {text!r}: {part!r} is not a tolerance",
-                do='write "4.0 mm ± 0.1 mm", "…, u = 0.02 mm" or "…, U = 0.04 mm, k = 2", with a decimal point',
+                do='write "4.0 mm ± 0.1 mm" or "4.0 mm, u = 0.02 mm", with a decimal point',
                 code="bad-tolerance",
             )
     limits = _LIMITS.split(parts[0], maxsplit=1)
