@@ -115,10 +115,23 @@ def _cell_counts(lines: Lines, layout: Layout) -> NDArray[np.int64]:
         block = lines.signs[int(begins[row]) : int(ends[stop - 1])]
         local = begins[row:stop] - begins[row]
         marks = _separators(block, layout.separator, local, lines, layout.first + row)
-        edges = np.searchsorted(marks, np.append(local, block.size + 1))
-        counts[row:stop] = np.diff(edges) + (0 if layout.separator == " " else 1)
+        counts[row:stop] = _counted(marks, local, ends[row:stop] - begins[row], layout)
         row = stop
     return counts
+
+
+def _counted(
+    marks: NDArray[np.int64], begins: NDArray[np.int64], ends: NDArray[np.int64], layout: Layout
+) -> NDArray[np.int64] | int:
+    """Cells of each line, from where its separators (with blanks: its cells) lie."""
+    more = 0 if layout.separator == " " else 1
+    each = layout.count - more
+    if each > 0 and marks.size == begins.size * each:
+        # as many as there should be, the first and the last of each line within it: so all are
+        table = marks.reshape(-1, each)
+        if bool(np.all(table[:, 0] >= begins)) and bool(np.all(table[:, -1] < ends)):
+            return layout.count
+    return np.diff(np.searchsorted(marks, np.append(begins, ends[-1] + 1))) + more
 
 
 def _separators(
@@ -152,7 +165,8 @@ def _separators(
 def _stray_quotes(block: NDArray[np.uint8], separator: str, quotes: NDArray[np.int64]) -> NDArray[np.int64]:
     """Quotes that open behind, or close before, something else than a separator, a blank or a line end."""
     edge = np.zeros(256, dtype=bool)
-    edge[[9, 10, 13, 32, 34, ord(separator)]] = True
+    edge[[10, 13, 32, 34, ord(separator)]] = True
+    edge[9] |= separator == " "
     opening, closing = quotes[0::2], quotes[1::2]
     before = np.where(opening > 0, block[opening - 1], 10)
     after = np.where(closing + 1 < block.size, block[np.minimum(closing + 1, block.size - 1)], 10)

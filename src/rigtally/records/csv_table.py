@@ -77,15 +77,24 @@ def read_table(
     texts = [place for place in wanted if layout.kinds[place] in ("stamp", "date", "clock")]
     body = _Body(lines, layout, rows, last, [*_SPELLINGS, *missing], progress)
     bad: dict[int, list[tuple[int, str]]] = {}
-    if layout.marks.thousands:
-        bad = body.unreadable(numbers, weighed)
-        frame = body.frame(numbers, texts, bad)
-    else:
+    frame = None
+    if not layout.marks.thousands:
         try:
             frame = body.frame(numbers, texts, bad)
         except (ValueError, OverflowError):
-            bad = body.unreadable(numbers, weighed)
+            frame = None
+    if frame is None:
+        # look at every cell as a text, then read again without those that are no numbers
+        bad = body.unreadable(numbers, weighed)
+        try:
             frame = body.frame(numbers, texts, bad)
+        except (ValueError, OverflowError) as fault:
+            raise LogError(
+                f"the rows cannot be read: {str(fault).strip()[:120]}",
+                where=lines.source.name,
+                do="mend the line or take it out",
+                code="unreadable-cell",
+            ) from None
     if len(frame) != rows.size:
         raise LogError(
             f"{rows.size} lines gave {len(frame)} rows",
@@ -171,28 +180,45 @@ class _Body:
                 plain = plain.replace(mark.encode(), marks.thousands.encode())
             text = memoryview(plain)
         self.text = text
+        begin = int(lines.begins[layout.first])
+        self.quoted = bool((np.frombuffer(text, dtype=np.uint8) == 34).any())
+        self.on_disk = (
+            lines.source.on_disk
+            and progress is None
+            and len(text) + begin + 2 >= len(lines.source.text)
+            and rows.size == len(lines) - layout.first
+            and not self.quoted
+            and not (lines.signs[:begin] == 34).any()
+        )
 
     def _read(self, columns: Sequence[int], dtype: Any, missing: Any, **more: Any) -> Any:
         import pandas as pd
 
         separator = self.layout.separator
-        stream = io.BufferedReader(_Stream(self.text, self.progress), 1 << 18)
+        every = len(columns) == self.layout.count
         return pd.read_csv(
-            stream,
+            self._origin(),
             sep=r"\s+" if separator == " " else (separator if self.layout.count > 1 else "\x01"),
             header=None,
             names=list(range(self.layout.count)),
-            usecols=sorted(columns),
+            usecols=None if every else sorted(columns),
+            skiprows=self.layout.first if self.on_disk else None,
             dtype=dtype,
             na_values=missing,
             keep_default_na=False,
-            skipinitialspace=True,
+            skipinitialspace=self.quoted,
             skip_blank_lines=False,
             index_col=False,
             engine="c",
             encoding="utf-8",
             **more,
         )
+
+    def _origin(self) -> Any:
+        """The file itself where its rows are all that is in it, which is faster than from memory."""
+        if self.on_disk:
+            return self.lines.source.name
+        return io.BufferedReader(_Stream(self.text, self.progress), 1 << 18)
 
     def frame(
         self, numbers: Sequence[int], texts: Sequence[int], bad: dict[int, list[tuple[int, str]]]

@@ -56,6 +56,8 @@ class Source:
         What the file was decoded from.
     packed : bool
         Whether it came out of gzip.
+    on_disk : bool
+        The text is the file, byte by byte.
     """
 
     name: str
@@ -63,6 +65,7 @@ class Source:
     text: memoryview
     encoding: str
     packed: bool = False
+    on_disk: bool = False
 
 
 def open_bytes(name: str) -> memoryview:
@@ -119,7 +122,9 @@ def open_text(name: str, encoding: str | None = None) -> Source:
         if bytes(raw[: len(magic)]) == magic:
             raise LogError(f"this is {what}, no text log", where=name, do=do, code="binary")
     text, found = _decoded(raw, name, encoding)
-    return Source(name, sha256, _plain_line_ends(text), found, packed)
+    plain = _plain_line_ends(text)
+    same = plain.obj is raw.obj and len(plain) == len(raw)
+    return Source(name, sha256, plain, found, packed, same and not packed)
 
 
 def _unpacked(raw: memoryview, name: str) -> bytes:
