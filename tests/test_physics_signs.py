@@ -228,7 +228,8 @@ REFUSED = {
     "no-drive": (lambda b: b.element("r", "resistor", "a", resistance=1.0), ("[[drive]]",)),
     "unmoved-reading": (
         lambda b: b.element("c", "capacitor", "a", capacitance=1.0)
-        .element("r", "resistor", "a", resistance=1.0).element("d", "resistor", "b", resistance=1.0).drive("u", "voltage", "b"),
+        .element("r", "resistor", "a", resistance=1.0)
+        .element("d", "resistor", "b", resistance=1.0).drive("u", "voltage", "b"),
         ("'y'",),
     ),
 }  # fmt: skip

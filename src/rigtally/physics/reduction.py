@@ -10,7 +10,7 @@ coefficient, so that small coefficients come out as exactly as large ones.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -33,7 +33,7 @@ class Reduction:
         Degree of the common factor.
     by_chance : int
         How much of it is there at the nominal values only, not by structure.
-    powers, degree, integrators
+    powers, degree, integrators, denominator_powers
         As in `Structure`, of what is left.
     removed : tuple of complex
         The removed poles at the nominal values.
@@ -45,6 +45,7 @@ class Reduction:
     degree: int
     integrators: int
     removed: tuple[complex, ...]
+    denominator_powers: tuple[int, ...] = ()
 
     @staticmethod
     def found(structure: Structure, denominator: Array, numerators: Array) -> Reduction:
@@ -54,15 +55,19 @@ class Reduction:
         chance = max(0, len(cancels) - structure.common)
         zero = tuple(0j for _ in range(structure.removed_zero))
         plain = Reduction(
-            structure.common, 0, structure.powers, structure.degree, structure.integrators, zero
+            structure.common,
+            0,
+            structure.powers,
+            structure.degree,
+            structure.integrators,
+            zero,
+            structure.denominator_powers,
         )
         if not structure.common and not chance:
             return plain
         removed = (*zero, *(complex(p) for p in cancels[: structure.common + chance]))
         if not chance:
-            return Reduction(
-                structure.common, 0, structure.powers, structure.degree, structure.integrators, removed
-            )
+            return replace(plain, removed=removed)
         common = structure.common + chance
         trial = Reduction(common, chance, (), structure.degree - chance, structure.integrators, removed)
         den, nums = trial.apply(denominator, numerators)
@@ -126,8 +131,11 @@ class Reduction:
         n = self.degree
         q, r = nums.shape[:2]
         out = np.ones((1 + q * r, n + 1), dtype=bool)
-        out[0, n] = False
+        if self.denominator_powers:
+            out[0] = False
+            out[0, list(self.denominator_powers)] = True
         out[0, : self.integrators] = False
+        out[0, n] = False
         if self.powers:
             for k in range(q * r):
                 out[1 + k] = False

@@ -37,6 +37,7 @@ class Structure:
         Degree of the factor that the determinants share for all values and that is removed.
     removed_zero : int
         Poles at s = 0 of the network that no entry has.
+    denominator_powers : powers of s with a coefficient that is not identically zero
     """
 
     powers: tuple[tuple[tuple[int, ...], ...], ...]
@@ -44,6 +45,7 @@ class Structure:
     integrators: int
     common: int
     removed_zero: int
+    denominator_powers: tuple[int, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -214,7 +216,8 @@ def _structure(
     g, d, ns = best if best is not None else (0, [], [])
     integrators = next(k for k, c in enumerate(d) if c)
     powers = tuple(tuple(tuple(k for k, c in enumerate(p) if c) for p in row) for row in ns)
-    return Structure(powers, len(d) - 1, integrators, g, removed_zero)
+    below = tuple(k for k, c in enumerate(d) if c)
+    return Structure(powers, len(d) - 1, integrators, g, removed_zero, below)
 
 
 def _modular(poly: Polynomial, x: Sequence[int]) -> list[int]:
