@@ -3,10 +3,10 @@
 `property_value(rig, medium, property, values)` gives a property that the rig file does not state itself,
 with its derivative by the rig's values it depends on (temperature, pressure).
 
-Sources, all from memory, checked in the tests against IAPWS figures and a reference library's values:
-water's density and compressibility, Kell, J. Chem. Eng. Data 20 (1975) 97, at atmospheric pressure; water's viscosity,
-IAPWS R12-08, the short formula at 0.1 MPa; air's viscosity, Lemmon & Jacobsen, Int. J. Thermophys. 25 (2004) 21
-(dilute gas and the two terms linear in density); other gases, Sutherland's law; density by the ideal gas law.
+Sources, all from memory, checked in the tests against IAPWS figures and a reference library's values: water
+density and compressibility, Kell, J. Chem. Eng. Data 20 (1975) 97, at atmospheric pressure; water viscosity,
+IAPWS R12-08, the short formula at 0.1 MPa; viscosity of air, Lemmon & Jacobsen, Int. J. Thermophys. 25 (2004)
+21 (dilute gas, two terms linear in density); other gases, Sutherland's law; density by the ideal gas law.
 """
 
 from __future__ import annotations
@@ -34,7 +34,7 @@ class Gas:
     sutherland: float
 
 
-# molar masses and heat capacity ratios at 20 °C and 1 bar, Sutherland's constants: handbook values, from memory
+# molar masses, heat capacity ratios (20 °C, 1 bar), Sutherland constants: handbook values, from memory
 GASES = {
     "air": Gas(0.0289586, 1.402, 1.716e-5, 273.15, 110.4),
     "nitrogen": Gas(0.0280134, 1.401, 1.663e-5, 273.15, 106.7),
