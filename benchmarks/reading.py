@@ -44,7 +44,9 @@ def main(count: int) -> None:
             with path.open("w") as stream:
                 stream.write(separator.join(["t [s]", "p1 [kPa]", "p2 [kPa]"]) + "\n")
                 for begin in range(0, count, 100_000):
-                    lines = "\n".join("%.3f;%.5f;%.5f" % tuple(row) for row in table[begin : begin + 100_000])
+                    lines = "\n".join(
+                        f"{t:.3f};{p:.5f};{q:.5f}" for t, p, q in table[begin : begin + 100_000]
+                    )
                     lines = lines.replace(".", "D").replace(";", separator).replace("D", decimal)
                     stream.write(lines + "\n")
             bare, ours = best(

@@ -281,6 +281,9 @@ def test_decimal_comma_between_commas_is_never_taken_as_columns(write: Write) ->
         ("time,p", "29/02/2024 10:00:{k:02d},{p:.3f}", 1.0),
         ("time,p", "3/4/2024 10:00:{k:02d},{p:.3f}", 1.0),
         ("time,p", "2024/2/29 10:00:{k:02d},{p:.3f}", 1.0),
+        ("time,p", "1-Feb-2024 10:00:{k:02d}.5,{p:.3f}", 1.0),
+        ("time,p", "17:{k:02d}.5,{p:.3f}", 1.0),
+        ("date,time,p", "2024-02-29,7:{k:02d},{p:.3f}", 60.0),
     ],
 )
 def test_time_in_many_forms(heading: str, pattern: str, interval: float, write: Write) -> None:
@@ -382,3 +385,28 @@ def test_a_wrong_layout_that_is_stated_is_refused(write: Write) -> None:
     path = write("t [s];p\n" + rows("{t:.2f};{p:.3f}"))
     assert isinstance(refusal(path, decimal=","), LogError)
     assert isinstance(refusal(path, separator="tab"), LogError)
+
+
+def test_hours_and_minutes_or_minutes_and_seconds(write: Write) -> None:
+    """0:49 is one or the other: refused, and left aside where the rate is stated."""
+    path = write("time;p\n" + rows("0:{k:02d};{p:.4f}"))
+    assert refusal(path).code == "ambiguous"
+    assert rt.read(path, rate="1 Hz").interval == 1.0
+
+
+def test_a_file_that_ends_within_its_last_cell(write: Write) -> None:
+    """Without a last line end and with fewer decimals the last cell is left out, and named."""
+    text = "t [s];p;q\n" + rows("{t:.2f};{p:.4f};{q:.4f}")
+    q = rt.read(write(text + "15.00;2.5000;1.2")).channel("q")
+    assert np.isnan(q.samples[-1])
+    assert [fault.kind for fault in q.faults] == ["cut"]
+    assert rt.read(write(text + "15.00;2.5000;1.2000")).channel("q").faults == ()
+    assert refusal(write(text + "15.00;2.50")).code == "ragged"
+
+
+def test_a_named_time_column_may_have_any_name(write: Write) -> None:
+    """time= takes a column whose name does not tell, also where channels are chosen."""
+    path = write("n;x [s];p;q\n" + rows("{k};{t:.2f};{p:.4f};{q:.4f}"))
+    assert refusal(path).code == "no-clock"
+    found = rt.read(path, time="x", channels=["q"])
+    assert (found.names, found.interval) == (("q",), 0.25)

@@ -21,12 +21,13 @@ MISSING = frozenset(
 SPACES = " \u00a0\u2009\u202f\u2007"
 HIGH_COMMAS = "'\u2019"
 
-_CLOCK = r"\d{1,2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?(?:\s?[AaPp]\.?[Mm]\.?)?"
+_CLOCK = r"(?:\d{1,2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?(?:\s?[AaPp]\.?[Mm]\.?)?|\d{1,4}:\d{2}[.,]\d+)"
+_MONTH = r"(?:jan|feb|mar|apr|may|jun|jul|aug|sep|oct|nov|dec)[a-z]*"
 _YMD = r"\d{4}([-/.])\d{1,2}\1\d{1,2}"
-_DMY = r"\d{1,2}([-/.])\d{1,2}\2(?:\d{4}|\d{2})"
+_DMY = rf"(?:\d{{1,2}}([-/.])\d{{1,2}}\2(?:\d{{4}}|\d{{2}})|\d{{1,2}}[-/. ]{_MONTH}[-/. ]\d{{4}})"
 _ZONE = r"(?:\s?(?:Z|UTC|[+-]\d{2}:?\d{2}|[+-]\d{2}))?"
-STAMP = re.compile(rf"(?:{_YMD}|{_DMY})(?:T|\s+|,\s*){_CLOCK}{_ZONE}")
-DATE = re.compile(rf"(?:{_YMD}|{_DMY})")
+STAMP = re.compile(rf"(?:{_YMD}|{_DMY})(?:T|\s+|,\s*){_CLOCK}{_ZONE}", re.IGNORECASE)
+DATE = re.compile(rf"(?:{_YMD}|{_DMY})", re.IGNORECASE)
 CLOCK = re.compile(_CLOCK + _ZONE)
 _LOOSE = re.compile(r"[+-]?(?:\d[\d.,'\u2019 \u00a0\u2009\u202f\u2007]*)?[.,]?\d\.?(?:[eE][+-]?\d+)?")
 _DOUBLE_MARK = re.compile(r"[.,'\u2019 \u00a0\u2009\u202f\u2007]{2}")

@@ -313,7 +313,8 @@ def _refuse_pairs(lines: Lines, layout: Layout) -> None:
 
 def _reading(lines: Lines, row: int, layout: Layout) -> str:
     cells = split(lines[row], layout.separator)
-    return f"{' | '.join(cells)} (columns between {WORDS[layout.separator]}, {layout.marks.words()})"
+    between = f"columns between {WORDS[layout.separator]}" if layout.count > 1 else "one column"
+    return f"{' | '.join(cells)} ({between}, {layout.marks.words()})"
 
 
 def _ambiguous(lines: Lines, row: int, first: str, second: str, option: str) -> LogError:

@@ -6,13 +6,14 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 from rigtally.errors import LogError
-from rigtally.records.columns import Column
+from rigtally.records.column import Column
 from rigtally.records.csv_head import Heading, read_heading
 from rigtally.records.csv_layout import WORDS, Layout, Wishes, detect
 from rigtally.records.csv_lines import Lines
 from rigtally.records.csv_table import Disagreement, Table, read_table
 from rigtally.records.record import Provenance
 from rigtally.records.source import Source, open_text
+from rigtally.records.time_column import time_like
 
 # how often the layout is looked at again when the rows disagree with it
 ROUNDS = 4
@@ -109,11 +110,9 @@ def _wanted(
                 do="name the channels to read, or take the text out of the column",
                 code="unreadable-cell",
             )
-        if kind == "number" and channels is not None and place > 0:
-            from rigtally.records.columns import time_like
-
-            if heading.names[place] not in channels and not time_like(heading.names[place]):
-                continue
+        needless = channels is not None and place > 0 and heading.names[place] not in channels
+        if kind == "number" and needless and not time_like(heading.names[place]):
+            continue
         if kind not in ("words", "odd"):
             wanted.append(place)
     return tuple(wanted)

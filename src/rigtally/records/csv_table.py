@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigtally.errors import LogError
-from rigtally.records.csv_cells import HIGH_COMMAS, MISSING, SPACES, kind, number_pattern
+from rigtally.records.csv_cells import HIGH_COMMAS, MISSING, SPACES, kind, number_pattern, split
 from rigtally.records.csv_layout import Layout
 from rigtally.records.csv_lines import Lines
 from rigtally.records.csv_rows import find_rows
@@ -107,6 +107,12 @@ def read_table(
     for place in numbers:
         values = frame[place].to_numpy(dtype=float, copy=False)
         out[place], faults[place] = _accounted(values, bad.get(place, []))
+    if layout.count - 1 in out and _cut_short(lines, layout, rows):
+        values = out[layout.count - 1].copy()
+        values[-1] = np.nan
+        text = "the file ends within the last cell, which is left out"
+        out[layout.count - 1] = values
+        faults[layout.count - 1] += (Fault("cut", text, 1, (values.size - 1,)),)
     return Table(
         out,
         {place: frame[place] for place in texts},
@@ -115,6 +121,17 @@ def read_table(
         footer,
         int(last - layout.first - rows.size),
     )
+
+
+def _cut_short(lines: Lines, layout: Layout, rows: NDArray[np.int64]) -> bool:
+    """No line end after the last row, and fewer decimals in its last cell than in the rows before."""
+    if lines.signs[-1] in (10, 13) or int(rows[-1]) != len(lines) - 1 or rows.size < 4:
+        return False
+    cells = [split(lines[int(row)], layout.separator or ",")[-1] for row in rows[-20:]]
+    places = [
+        len(cell.rpartition(layout.marks.decimal)[2]) * (layout.marks.decimal in cell) for cell in cells
+    ]
+    return places[-1] < min(places[:-1])
 
 
 def _accounted(values: Array, bad: list[tuple[int, str]]) -> tuple[Array, tuple[Fault, ...]]:
@@ -184,6 +201,7 @@ class _Body:
         self.quoted = bool((np.frombuffer(text, dtype=np.uint8) == 34).any())
         self.on_disk = (
             lines.source.on_disk
+            and marks.thousands not in (" ", "'")
             and progress is None
             and len(text) + begin + 2 >= len(lines.source.text)
             and rows.size == len(lines) - layout.first

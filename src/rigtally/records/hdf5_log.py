@@ -12,17 +12,19 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigtally.errors import LogError
-from rigtally.records.columns import Column, time_like, to_record
+from rigtally.records.column import Column
+from rigtally.records.columns import to_record
 from rigtally.records.hdf5_tree import Leaf, attributes, names_of, rate_of, safe, unit_of, walk
 from rigtally.records.record import Fault, Provenance, Record, Response
 from rigtally.records.response_table import is_response, to_response
+from rigtally.records.time_column import time_like
 
 Array = NDArray[np.float64]
 
 _VALUE_NAMES = ("data", "values", "value", "samples", "signal", "y")
-_SCALES = ("scale_factor", "scale", "factor", "slope")
-_OFFSETS = ("add_offset", "offset", "intercept")
-_FILLS = ("_fillvalue", "missing_value", "fill_value")
+SCALES = ("scale_factor", "scale", "factor", "slope")
+OFFSETS = ("add_offset", "offset", "intercept")
+FILLS = ("_fillvalue", "missing_value", "fill_value")
 
 
 def read_hdf5(
@@ -54,11 +56,11 @@ def read_hdf5(
 
     try:
         with h5py.File(name, "r") as stream:
-            leaves = _leaves(stream, file, group)
-            chosen = _choose(leaves, file)
+            leaves = leaves_of(stream, file, group)
+            chosen = choose(leaves, file)
             columns = [column for leaf in chosen for column in _columns(leaf, chosen, file)]
-            metadata = _metadata(stream, chosen)
-            stated = _rate(stream, chosen, file)
+            metadata = metadata_near(stream, chosen)
+            stated = rate_near(stream, chosen, file)
             kinds = sorted({_shape(leaf) for leaf in chosen})
     except (OSError, RuntimeError, KeyError, ValueError, TypeError, OverflowError, MemoryError) as fault:
         raise LogError(
@@ -68,7 +70,7 @@ def read_hdf5(
             code="unreadable",
         ) from None
     paths = ", ".join(leaf.path for leaf in chosen[:6]) + (", …" if len(chosen) > 6 else "")
-    provenance = Provenance(file, _sha256(name), None, (f"HDF5, {' and '.join(kinds)}: {paths}",), metadata)
+    provenance = Provenance(file, digest(name), None, (f"HDF5, {' and '.join(kinds)}: {paths}",), metadata)
     if is_response(columns):
         return to_response(columns, units, provenance)
     return to_record(
@@ -82,7 +84,7 @@ def read_hdf5(
     )
 
 
-def _leaves(stream: Any, file: str, group: str) -> list[Leaf]:
+def leaves_of(stream: Any, file: str, group: str) -> list[Leaf]:
     import h5py
 
     root = stream
@@ -104,7 +106,7 @@ def _leaves(stream: Any, file: str, group: str) -> list[Leaf]:
     return list(walk(root, file))
 
 
-def _choose(leaves: list[Leaf], file: str) -> list[Leaf]:
+def choose(leaves: list[Leaf], file: str) -> list[Leaf]:
     """The datasets of the one record there is.
 
     Raises
@@ -153,7 +155,7 @@ def _one_channel_each(sets: list[list[Leaf]]) -> list[Leaf] | None:
         return None
     if sum(time_like(leaf.name) for leaf in every) > 1:
         return None
-    names = [_channel_name(leaf, every) for leaf in every]
+    names = [channel_name(leaf, every) for leaf in every]
     return every if len(set(names)) == len(names) else None
 
 
@@ -168,7 +170,7 @@ def _shape(leaf: Leaf) -> str:
     return "a matrix of channels" if leaf.dataset.ndim == 2 else "a dataset for each channel"
 
 
-def _channel_name(leaf: Leaf, chosen: Sequence[Leaf]) -> str:
+def channel_name(leaf: Leaf, chosen: Sequence[Leaf]) -> str:
     label = leaf.attributes.get("name", leaf.attributes.get("channel_name"))
     if isinstance(label, str) and label.strip() and not time_like(leaf.name):
         return label.strip()
@@ -188,7 +190,7 @@ def _columns(leaf: Leaf, chosen: Sequence[Leaf], file: str) -> list[Column]:
         return _fields(data, leaf, unit, file)
     if leaf.dataset.ndim == 2:
         return _matrix(data, leaf, unit, chosen, file)
-    name = _channel_name(leaf, chosen)
+    name = channel_name(leaf, chosen)
     written = unit if isinstance(unit, str) else unit[0] if unit else None
     return [_column(name, written, data, leaf.attributes, leaf.path, file)]
 
@@ -238,7 +240,7 @@ def _matrix(
             parts = [part.strip() for part in unit.split(",")]
             written = parts[place] if len(parts) == width and width > 1 else written or unit
         attributes = dict(leaf.attributes)
-        for key in (*_SCALES, *_OFFSETS):
+        for key in (*SCALES, *OFFSETS):
             each = attributes.get(key)
             if isinstance(each, np.ndarray) and each.size == width:
                 attributes[key] = each.reshape(-1)[place]
@@ -256,13 +258,13 @@ def _column(
         return Column(name, written, None, texts.astype(object), "stamp" if time_like(name) else "words")
     values = np.array(data, dtype=np.float64)
     faults: tuple[Fault, ...] = ()
-    for key in _FILLS:
+    for key in FILLS:
         if isinstance(attributes.get(key), int | float | np.number):
             gone = np.asarray(data == attributes[key])
             if gone.any():
                 values[gone] = np.nan
                 faults += (Fault("missing", f"{gone.sum()} cells hold no value", int(gone.sum())),)
-    scale, offset = _single(attributes, _SCALES, path, file), _single(attributes, _OFFSETS, path, file)
+    scale, offset = single(attributes, SCALES, path, file), single(attributes, OFFSETS, path, file)
     if scale is not None:
         values *= scale
     if offset is not None:
@@ -270,7 +272,7 @@ def _column(
     return Column(name, written, values, faults=faults)
 
 
-def _single(attributes: dict[str, Any], keys: Sequence[str], path: str, file: str) -> float | None:
+def single(attributes: dict[str, Any], keys: Sequence[str], path: str, file: str) -> float | None:
     """The one scale (or offset) that is stated; two that differ, or none that is a number, are refused."""
     found = {key: attributes[key] for key in keys if key in attributes}
     if not found:
@@ -289,7 +291,7 @@ def _single(attributes: dict[str, Any], keys: Sequence[str], path: str, file: st
     return values.pop()
 
 
-def _rate(stream: Any, chosen: Sequence[Leaf], file: str) -> float | None:
+def rate_near(stream: Any, chosen: Sequence[Leaf], file: str) -> float | None:
     for leaf in chosen:
         found = rate_of(leaf.attributes, file)
         if found is not None:
@@ -302,7 +304,7 @@ def _rate(stream: Any, chosen: Sequence[Leaf], file: str) -> float | None:
     return None
 
 
-def _metadata(stream: Any, chosen: Sequence[Leaf]) -> dict[str, str]:
+def metadata_near(stream: Any, chosen: Sequence[Leaf]) -> dict[str, str]:
     out: dict[str, str] = {}
     for path in sorted({leaf.parent for leaf in chosen} | {"/"}):
         for key, value in attributes(stream[path]).items():
@@ -311,7 +313,7 @@ def _metadata(stream: Any, chosen: Sequence[Leaf]) -> dict[str, str]:
     return out
 
 
-def _sha256(name: str) -> str:
+def digest(name: str) -> str:
     digest = hashlib.sha256()
     with open(name, "rb") as stream:
         while block := stream.read(1 << 22):

@@ -93,7 +93,13 @@ def read(
         raise LogError("this is no HDF5 file", where=name, do="leave the group out", code="unreadable")
     wishes = Wishes.of(separator, decimal, thousands, header)
     log = read_text(
-        name, encoding=encoding, wishes=wishes, channels=channels, missing=missing, progress=progress
+        name,
+        encoding=encoding,
+        wishes=wishes,
+        # a named time column may be any
+        channels=channels if time is None else None,
+        missing=missing,
+        progress=progress,
     )
     if time is None and rate is None and is_response(log.columns):
         return to_response(log.columns, stated, log.provenance)

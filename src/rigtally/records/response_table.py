@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from rigtally.errors import LogError
 from rigtally.quantities.units import dimension
-from rigtally.records.columns import Column
+from rigtally.records.column import Column
 from rigtally.records.record import Provenance, Response
 from rigtally.records.written_units import NO_UNIT, stated
 

@@ -20,6 +20,9 @@ _PARTS = (
     r"(?:(?P<h>\d{1,2}):(?P<n>\d{2})(?::(?P<s>\d{2}(?:[.,]\d+)?))?\s?(?P<half>[AaPp]\.?[Mm]\.?)?)?\s?"
     r"(?P<zone>Z|UTC|[+-]\d{2}:?\d{2}|[+-]\d{2})?$"
 )
+_MINUTES = r"\d{1,4}:\d{2}[.,]\d+"
+_MONTHS = ("jan", "feb", "mar", "apr", "may", "jun", "jul", "aug", "sep", "oct", "nov", "dec")
+_NAMED = re.compile(rf"^(\d{{1,2}})[-/. ]({'|'.join(_MONTHS)})[a-z]*[-/. ](\d{{4}})", re.IGNORECASE)
 DAY = 86400.0
 
 
@@ -48,11 +51,23 @@ def seconds(texts: Any, where: str, first_line: int = 1) -> tuple[Array, str]:
     if kept.empty:
         return out, ""
     rows = np.flatnonzero(known.to_numpy())
+    start = str(kept.iloc[0])
+    if _NAMED.match(start):
+        kept = kept.str.replace(_NAMED, _numbered, regex=True)
     values = _iso(kept)
+    if values is None and kept.str.fullmatch(_MINUTES).all():
+        parts = kept.str.replace(",", ".", regex=False).str.split(":", expand=True)
+        values = 60.0 * _numbers(parts[0]) + _numbers(parts[1])
     if values is None:
         values = _parts(kept, rows, where, first_line)
     out[rows] = values - values[0]
-    return out, str(kept.iloc[0])
+    return out, start
+
+
+def _numbered(date: re.Match[str]) -> str:
+    """Year-month-day of a date with the month's name."""
+    month = _MONTHS.index(date.group(2).lower()) + 1
+    return f"{date.group(3)}-{month:02d}-{int(date.group(1)):02d}"
 
 
 def _iso(kept: Any) -> Array | None:
@@ -85,6 +100,13 @@ def _parts(kept: Any, rows: NDArray[np.intp], where: str, first_line: int) -> Ar
     hour = np.where(half == "p", hour % 12 + 12, np.where(half == "a", hour % 12, hour))
     clock = hour * 3600.0 + _numbers(parts["n"]) * 60.0 + second - _zone(parts["zone"])
     if not dated:
+        if parts["s"].isna().all() and parts["half"].isna().all():
+            raise LogError(
+                f"the time {kept.iloc[-1]!r} can be read as hours and minutes or as minutes and seconds",
+                where=where,
+                do="write the seconds, or state --rate",
+                code="ambiguous",
+            )
         return _past_midnight(clock)
     days = _days(parts, kept, rows, where, first_line)
     # whole days first: a stamp's digits stand in the seconds of the day
