@@ -19,18 +19,19 @@ from rigtally.forms.named import Form, matrix_form
 from rigtally.physics.dominant import Dominant, dominant_pair
 from rigtally.physics.line_frequency import leading_pole
 from rigtally.physics.line_model import LineModel, Solved
+from rigtally.physics.modular import modular_structure
 from rigtally.physics.network import Network
 from rigtally.physics.parameters import parameter_derivative, parameters_from_coefficients
 from rigtally.physics.pencil import Modes, Pencil, System
 from rigtally.physics.reduction import Reduction
 from rigtally.physics.rig import Rig
+from rigtally.physics.transfer import Structure, needs_derivative
 
 Array = NDArray[np.float64]
 ComplexArray = NDArray[np.complex128]
 POLYNOMIAL_ORDER = 10  # above it polynomials in s have lost their meaning in double precision
 CHECKED = 1e-8  # relative agreement of the polynomials with the pencil's response
 ZEROS_UP_TO = 150  # unknowns of the pencil up to which every entry's zeros are computed
-ABSENT = 1e-9  # scaled coefficients below this share of their polynomial's largest are structural zeros
 
 
 @dataclass(frozen=True)
@@ -56,14 +57,22 @@ class LargeModel(LineModel):
         state = self._state(self.values.nominal, self.omega)
         hidden = np.setdiff1d(np.arange(state.modes.poles.size), state.seen)
         removed = tuple(complex(p) for p in state.modes.poles[hidden])
-        self.order = state.seen.size
-        self.polynomial = self.order <= POLYNOMIAL_ORDER
         self.dominant: Dominant | None = None
-        if self.polynomial:
-            den, nums = self._polynomials(state)
-            self.form = self._form_of(den, nums)
-            self._check(state, den, nums)
+        self.structure: Structure | None = None
+        if self.system.order <= POLYNOMIAL_ORDER + hidden.size:
+            self.structure = modular_structure(
+                *self.system.equations,
+                len(network.columns),
+                self.system.inputs,
+                len(network.symbols),
+                self.system.order,
+                self.system.shifts.tolist(),
+            )
+        if self.structure is not None and self.structure.degree <= POLYNOMIAL_ORDER:
+            self.form = self._form_of(self.structure)
+            self._check(state)
         else:
+            self.structure = None
             self.dominant = dominant_pair(state.pencil, state.modes, state.seen)
             self.form = self._dominant_form(self.dominant)
         self.reduction = Reduction(0, 0, self.form.powers, self.form.degree, self.form.integrators, removed)
@@ -83,25 +92,65 @@ class LargeModel(LineModel):
         modes = pencil.modes()
         return _State(pencil, modes, np.flatnonzero(pencil.seen(modes)))
 
+    def _moving(self, state: _State, structure: Structure) -> NDArray[np.intp]:
+        """Modes of the poles that are not at zero; as many as the structure says.
+
+        Raises
+        ------
+        RigError
+            code "poles-unclear": more or fewer are found.
+        """
+        size = np.abs(state.modes.poles)
+        tiny = 1e-9 * np.median(size[size > 0]) if np.any(size > 0) else 0.0
+        found = np.array([k for k in state.seen if size[k] > tiny], dtype=np.intp)
+        if found.size != structure.degree - structure.integrators:
+            raise RigError(
+                f"{found.size} poles were found where the structure has "
+                f"{structure.degree - structure.integrators}: some all but cancel",
+                where=self.rig.file,
+                do="leave out elements that act far from the frequencies of interest",
+                code="poles-unclear",
+            )
+        return found
+
     def _polynomials(self, state: _State) -> tuple[Array, Array]:
         """Monic denominator and numerators, interpolated on a circle of the poles' mean size."""
-        poles = state.poles
-        den = np.atleast_1d(np.real(np.poly(poles)))[::-1].copy()
-        points, radius = _circle(poles, self.order)
-        gains = state.pencil.response(points)
-        values = gains * np.prod(points[:, None] - poles[None, :], axis=1)[:, None, None]
-        return den, _clean(_interpolate(values, radius, self.order), radius)
+        structure = self._structure()
+        poles = state.modes.poles[self._moving(state, structure)]
+        den = np.zeros(structure.degree + 1)
+        den[structure.integrators :] = np.atleast_1d(np.real(np.poly(poles)))[::-1]
+        points = _circle(poles, structure.degree)
+        whole = points**structure.integrators * np.prod(points[:, None] - poles[None, :], axis=1)
+        values = state.pencil.response(points) * whole[:, None, None]
+        return den, self._kept(_interpolate(values, points))
 
-    def _form_of(self, den: Array, nums: Array) -> Form:
-        integrators = int(np.argmax(den != 0.0))
-        powers = [[tuple(np.flatnonzero(n).tolist()) for n in row] for row in nums]
-        _refuse_unmoved(self.rig, powers)
+    def _kept(self, numerators: Array) -> Array:
+        """Coefficients that the structure has; the others are zero."""
+        out = np.zeros_like(numerators)
+        for i, row in enumerate(self._structure().powers):
+            for j, free in enumerate(row):
+                out[..., i, j, list(free)] = numerators[..., i, j, list(free)]
+        return out
+
+    def _structure(self) -> Structure:
+        if self.structure is None:
+            raise RigError(
+                "the order is too high for polynomials", where=self.rig.file, code="order-too-high"
+            )
+        return self.structure
+
+    def _form_of(self, structure: Structure) -> Form:
+        _refuse_unmoved(self.rig, structure.powers)
+        for reading, row in zip(self.rig.readings, structure.powers, strict=True):
+            for drive, free in zip(self.rig.drives, row, strict=True):
+                if free and free[-1] > structure.degree:
+                    raise needs_derivative(self.rig, reading, drive)
         return matrix_form(
             [r.name for r in self.rig.readings],
             [d.name for d in self.rig.drives],
-            powers,
-            self.order - integrators,
-            integrators=integrators,
+            structure.powers,
+            structure.degree - structure.integrators,
+            integrators=structure.integrators,
         )
 
     def _dominant_form(self, dominant: Dominant) -> Form:
@@ -111,18 +160,21 @@ class LargeModel(LineModel):
         _refuse_unmoved(self.rig, powers)
         return matrix_form([r.name for r in self.rig.readings], [d.name for d in self.rig.drives], powers, 2)
 
-    def _check(self, state: _State, den: Array, nums: Array) -> None:
+    def _check(self, state: _State) -> None:
         """The polynomials give the pencil's response at frequencies between and beyond the poles."""
+        den, nums = self._polynomials(state)
         sizes = np.abs(state.poles[np.abs(state.poles) > 0])
         low, high = (sizes.min(), sizes.max()) if sizes.size else (1.0, 1.0)
         s = np.asarray(1j * np.geomspace(0.3 * low, 3.0 * high, 7), dtype=np.complex128)
         powers = s[:, None] ** np.arange(den.size)
         mine = np.einsum("mk,qrk->mqr", powers, nums) / (powers @ den)[:, None, None]
         theirs = state.pencil.response(s)
-        error = np.abs(mine - theirs).max() / max(np.abs(theirs).max(), 1e-300)
+        error = (np.abs(mine - theirs).max(axis=0) / np.maximum(np.abs(theirs).max(axis=0), 1e-300)).max(
+            where=np.array([[bool(free) for free in row] for row in self._structure().powers]), initial=0.0
+        )
         if not error < CHECKED:
             raise RigError(
-                f"the polynomials of this rig (order {self.order}) lose {error:.1e} of its response",
+                f"the polynomials of this rig (order {den.size - 1}) lose {error:.1e} of its response",
                 where=self.rig.file,
                 do="the element values span too much for polynomials; leave out elements that act far from "
                 "the frequencies of interest",
@@ -166,8 +218,6 @@ class LargeModel(LineModel):
         state = self._state(values, self.solve_omega(values, self.omega))
         if self.dominant is not None:
             return self.dominant.again(state.pencil, state.modes).theta(self.form)
-        if state.seen.size != self.order:
-            return np.full(len(self.form.names), np.nan)
         return parameters_from_coefficients(self.form, *self._polynomials(state))
 
     def solve(self, values: Array | None = None) -> Solved:
@@ -186,26 +236,32 @@ class LargeModel(LineModel):
         d_poles = by_symbol.T @ by_poles  # (v, poles)
         if self.dominant is not None:
             return self._solve_dominant(state, by_symbol, d_poles, omega)
-        poles = state.poles
+        structure = self._structure()
+        moving = self._moving(state, structure)
+        poles = state.modes.poles[moving]
+        d_poles = by_symbol.T @ state.pencil.pole_derivative(state.modes, moving)
         den, nums = self._polynomials(state)
+        low = structure.integrators
         d_den = np.zeros((d_poles.shape[0], den.size))
         for k in range(poles.size):
             rest = np.atleast_1d(np.poly(np.delete(poles, k)))[::-1]
-            d_den[:, : rest.size] -= np.real(np.outer(d_poles[:, k], rest))
-        points, radius = _circle(poles, self.order)
-        slopes = np.zeros((points.size, d_poles.shape[0], *nums.shape[:2]), dtype=complex)
+            d_den[:, low : low + rest.size] -= np.real(np.outer(d_poles[:, k], rest))
+        points = _circle(poles, structure.degree)
+        slopes = np.zeros((points.size, d_poles.shape[0], *nums.shape[:2]), dtype=np.complex128)
         for m, s in enumerate(points):
-            gain, by = state.pencil.response_derivative(s)
-            whole = np.prod(s - poles)
+            gain, by = state.pencil.response_derivative(complex(s))
+            whole = s**low * np.prod(s - poles)
             d_whole = -whole * (d_poles @ (1.0 / (s - poles)))
             slopes[m] = np.tensordot(by_symbol.T, by, axes=1) * whole + d_whole[:, None, None] * gain
-        d_num = _interpolate(slopes, radius, self.order)
-        for i, row in enumerate(self.form.powers):
-            for j, free in enumerate(row):
-                d_num[:, i, j, [k for k in range(self.order + 1) if k not in free]] = 0.0
+        d_num = self._kept(_interpolate(slopes, points))
         theta = parameters_from_coefficients(self.form, den, nums)
         sensitivity = parameter_derivative(self.form, theta, d_den, d_num)
-        return Solved(omega, den, nums, d_den, d_num, theta, sensitivity, poles, d_poles.T)
+        at_zero = np.zeros(low, dtype=np.complex128)
+        d_zero = np.zeros((low, d_poles.shape[0]), dtype=np.complex128)
+        return Solved(
+            omega, den, nums, d_den, d_num, theta, sensitivity,
+            np.concatenate([at_zero, poles]), np.vstack([d_zero, d_poles.T]),
+        )  # fmt: skip
 
     def _solve_dominant(self, state: _State, by_symbol: Array, d_poles: ComplexArray, omega: float) -> Solved:
         """Coefficients of the dominant second order, with derivatives by those of its parameters."""
@@ -238,24 +294,22 @@ def _refuse_unmoved(rig: Rig, powers: Any) -> None:
             )
 
 
-def _circle(poles: ComplexArray, order: int) -> tuple[ComplexArray, float]:
-    """order + 1 points on a circle whose radius is the geometric mean of the poles' sizes."""
+def _circle(poles: ComplexArray, order: int) -> ComplexArray:
+    """order + 1 points on a circle of the poles' mean size, turned so that none comes near a pole."""
     sizes = np.abs(poles[np.abs(poles) > 0])
     radius = float(np.exp(np.mean(np.log(sizes)))) if sizes.size else 1.0
-    angle = 2.0 * math.pi * (np.arange(order + 1) + 0.25) / (order + 1)
-    return radius * np.exp(1j * angle), radius
+    best = (-1.0, np.zeros(0, dtype=np.complex128))
+    for turn in (0.05, 0.13, 0.21, 0.29, 0.37, 0.45):
+        points = radius * np.exp(2j * math.pi * (np.arange(order + 1) + turn) / (order + 1))
+        nearest = float(np.abs(points[:, None] - poles[None, :]).min()) if poles.size else radius
+        if nearest > best[0]:
+            best = (nearest, points)
+    return best[1]
 
 
-def _interpolate(values: ComplexArray, radius: float, order: int) -> Array:
-    """Real coefficients (…, order + 1) of polynomials from their values (m, …) on the circle."""
-    k = np.arange(order + 1)
-    angle = 2.0 * math.pi * (k + 0.25) / (order + 1)
-    inverse = np.exp(-1j * np.outer(k, angle)) / (order + 1) * radius ** -k[:, None].astype(float)
+def _interpolate(values: ComplexArray, points: ComplexArray) -> Array:
+    """Real coefficients (…, m) of polynomials from their values (m, …) at m points on a circle about 0."""
+    k = np.arange(points.size)
+    inverse = points[None, :] ** -k[:, None].astype(float) / points.size
     out: Array = np.moveaxis(np.tensordot(inverse, values, axes=1), 0, -1).real
     return out
-
-
-def _clean(nums: Array, radius: float) -> Array:
-    """Zero what is rounding, with the time scaled to the circle."""
-    sizes = np.abs(nums) * radius ** np.arange(nums.shape[-1])
-    return np.where(sizes > ABSENT * sizes.max(axis=-1, keepdims=True), nums, 0.0)

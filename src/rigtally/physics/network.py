@@ -19,7 +19,7 @@ from typing import Any
 from rigtally.errors import RigError
 from rigtally.physics.checks import check_structure
 from rigtally.physics.elements import Lowered, Symbol, lower
-from rigtally.physics.rig import GROUND, Drive, Port, Reading, Rig
+from rigtally.physics.rig import GROUND, Drive, Element, Port, Reading, Rig
 from rigtally.physics.spoken import Spoken, spoken
 
 # a polynomial in s and the symbols: packed exponents -> integer coefficient
@@ -249,9 +249,13 @@ def _reading_row(
 
 def _weight(rig: Rig, place: Drive | Reading) -> Symbol:
     """ρ g of the medium whose level is imposed or read."""
+    tanks = [e for e in rig.elements if e.kind == "open-tank"]
     medium = place.medium
-    if not medium and place.port is not None:
-        tanks = [e for e in rig.elements if e.kind == "open-tank" and e.ports[0].first == place.port.first]
+    if medium:
+        tanks = [e for e in tanks if e.medium == medium]
+    else:
+        node = place.port.first if place.port is not None else ""
+        tanks = [e for e in tanks if node in (e.ports[0].first, e.ports[0].second)]
         if not tanks:
             raise RigError(
                 f"{place.name!r}: a level needs an open tank at its node, or a medium",
@@ -260,8 +264,10 @@ def _weight(rig: Rig, place: Drive | Reading) -> Symbol:
                 code="level-without-medium",
             )
         medium = tanks[0].medium
+    density = {k: v for k, v in tanks[0].values.items() if k == "density"} if tanks else {}
 
     def weight(get: Callable[[str], Any], _: Any) -> Any:
-        return get(f"{medium}.density") * get("gravity")
+        return get("density") * get("gravity")
 
-    return Symbol("w", medium, ("weight", medium), weight)
+    taken = Element(medium, "open-tank", (), density, medium=medium)
+    return Symbol("w", medium, ("weight", medium), weight, taken)

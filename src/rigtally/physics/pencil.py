@@ -196,6 +196,7 @@ class System:
         width = len(network.columns)
         rows, outputs, _ = eliminate(network)
         rows, outputs, _ = relevant(rows, outputs, ["" for _ in rows], width)
+        self.equations = (rows, outputs)
         used = sorted({c for row in rows for c in row if c < width})
         place = {c: k for k, c in enumerate(used)}
         self.size = len(used)

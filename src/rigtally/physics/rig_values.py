@@ -144,10 +144,10 @@ class RigValues:
                 return self._named(named, element.values[key])
             if key == "gravity":
                 return self._gravity(named)
-            medium, _, prop = key.rpartition(".") if element is None else (element.medium, "", key)
-            if f"{medium}.{prop}" in self.rig.values:
-                return self._named(named, f"{medium}.{prop}")
-            return self._property(medium, prop, named)
+            medium = element.medium if element is not None else ""
+            if f"{medium}.{key}" in self.rig.values:
+                return self._named(named, f"{medium}.{key}")
+            return self._property(medium, key, named)
 
         return get
 

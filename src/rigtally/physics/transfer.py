@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from rigtally.errors import RigError
 from rigtally.physics.expansion import PRIME, Expansion, s_power
 from rigtally.physics.network import FIELD, MASK, Network, Polynomial
+from rigtally.physics.rig import Drive, Reading, Rig
 
 Array = NDArray[np.float64]
 
@@ -181,15 +182,19 @@ def _refuse_improper(network: Network, nums: Sequence[Sequence[Polynomial]], deg
     for i, row in enumerate(nums):
         for j, p in enumerate(row):
             if p and max(s_power(k) for k in p) > degree:
-                reading, drive = network.rig.readings[i], network.rig.drives[j]
-                raise RigError(
-                    f"reading {reading.name!r} ({reading.of}) needs the derivative of drive {drive.name!r} "
-                    f"({drive.imposes})",
-                    where=network.rig.file,
-                    do="put a resistance between, or drive the other quantity "
-                    "(the through value instead of the across value)",
-                    code="needs-derivative",
-                )
+                raise needs_derivative(network.rig, network.rig.readings[i], network.rig.drives[j])
+
+
+def needs_derivative(rig: Rig, reading: Reading, drive: Drive) -> RigError:
+    """The refusal of a reading that no finite drive could give."""
+    return RigError(
+        f"reading {reading.name!r} ({reading.of}) needs the derivative of drive {drive.name!r} "
+        f"({drive.imposes})",
+        where=rig.file,
+        do="put a resistance between, or drive the other quantity "
+        "(the through value instead of the across value)",
+        code="needs-derivative",
+    )
 
 
 def _structure(
@@ -205,13 +210,13 @@ def _structure(
         for row in ns:
             for p in row:
                 if p and len(common) > 1:
-                    common = _gcd(common, p)
+                    common = greatest_common(common, p)
         g = len(common) - 1
         if best is None or g < best[0]:
             best = (
                 g,
-                _divide(d, common)[0],
-                [[_divide(p, common)[0] if p else [] for p in row] for row in ns],
+                divide(d, common)[0],
+                [[divide(p, common)[0] if p else [] for p in row] for row in ns],
             )
     g, d, ns = best if best is not None else (0, [], [])
     integrators = next(k for k, c in enumerate(d) if c)
@@ -242,7 +247,7 @@ def _trimmed(p: list[int]) -> list[int]:
     return p
 
 
-def _divide(first: list[int], second: list[int]) -> tuple[list[int], list[int]]:
+def divide(first: list[int], second: list[int]) -> tuple[list[int], list[int]]:
     """Quotient and remainder modulo the prime (ascending coefficients)."""
     rest = list(first)
     inverse = pow(second[-1], PRIME - 2, PRIME)
@@ -256,9 +261,9 @@ def _divide(first: list[int], second: list[int]) -> tuple[list[int], list[int]]:
     return quotient, _trimmed(rest)
 
 
-def _gcd(first: list[int], second: list[int]) -> list[int]:
+def greatest_common(first: list[int], second: list[int]) -> list[int]:
     """Greatest common divisor modulo the prime (Euclid)."""
     a, b = list(first), list(second)
     while b:
-        a, b = b, _divide(a, b)[1]
+        a, b = b, divide(a, b)[1]
     return a
