@@ -19,7 +19,7 @@ from rigtally.physics.model import Model
 from rigtally.physics.network import assemble
 from rigtally.physics.prediction_result import Finding, Prediction
 from rigtally.physics.rig import Rig
-from rigtally.physics.tolerance_draws import monte_carlo_parameters
+from rigtally.physics.tolerance_draws import drawn_inputs, monte_carlo_parameters
 from rigtally.quantities.uncertain import Uncertain
 
 Array = NDArray[np.float64]
@@ -94,6 +94,9 @@ def predict(rig: Rig, *, monte_carlo: int = 0, seed: int = 0, progress: Progress
         warnings=tuple(warnings),
         removed_poles=model.reduction.removed,
         provenance=provenance,
+        evaluate_many=model.evaluate_many,
+        differentiate=lambda values: model.solve(values).sensitivity,
+        drawn=drawn_inputs(model)[0],
     )
 
 

@@ -56,6 +56,12 @@ class Prediction:
         (v,) values -> (p,) parameters, the network re-solved without linearising
         (NaN where the values make no such rig).
     budget : mapping of parameter to a list of (element, value, share)
+    evaluate_many : callable or None
+        (m, v) values -> (m, p) parameters, for draws.
+    differentiate : callable or None
+        (v,) values -> (p, v) exact derivative there.
+    drawn : tuple of Uncertain
+        The values as they are drawn (log-normal where u is large); empty: as in `inputs`.
     """
 
     title: str
@@ -76,6 +82,9 @@ class Prediction:
     warnings: tuple[Finding, ...] = ()
     removed_poles: tuple[complex, ...] = ()
     provenance: Mapping[str, Any] = field(default_factory=dict)
+    evaluate_many: Callable[[Array], Array] | None = None
+    differentiate: Callable[[Array], Array] | None = None
+    drawn: tuple[Uncertain, ...] = ()
 
     def to_dict(self) -> dict[str, Any]:
         """The prediction as the JSON contract states it."""
