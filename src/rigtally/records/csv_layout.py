@@ -123,7 +123,7 @@ def detect(lines: Lines, wishes: Wishes, extra: Iterable[int] = ()) -> Layout:
         rows = list(range(min(head, len(lines))))
         found = [
             layout
-            for separator in ([wishes.separator] if wishes.separator is not None else SEPARATORS)
+            for separator in _possible(lines, rows, wishes)
             if (layout := _candidate(lines, rows, separator, wishes, extra)) is not None
         ]
         # rows that begin at the end of the sample are too few to judge
@@ -138,6 +138,19 @@ def detect(lines: Lines, wishes: Wishes, extra: Iterable[int] = ()) -> Layout:
             )
         head *= 4
     return _settled(_only(lines, found, wishes), lines, wishes, extra)
+
+
+def _possible(lines: Lines, rows: Sequence[int], wishes: Wishes) -> list[str]:
+    """Separators that occur, and one that does not (for a single column)."""
+    if wishes.separator is not None:
+        return [wishes.separator]
+    begin, end = int(lines.begins[rows[0]]), int(lines.ends[rows[-1]])
+    text = bytes(lines.source.text[begin:end])
+    there = [separator for separator in SEPARATORS if separator.encode() in text]
+    if "\t" in there and " " not in there:
+        there.append(" ")
+    absent = [separator for separator in SEPARATORS[:-1] if separator not in there]
+    return [*there, *absent[:1]]
 
 
 def _candidate(

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 
 from rigtally.errors import LogError
@@ -46,7 +47,10 @@ def read_text(
     source = open_text(file, encoding)
     lines = Lines(source)
     wishes = wishes or Wishes()
-    layout, table, heading = _read(lines, wishes, channels, missing, progress)
+    # the hash takes no Python: it runs beside the reading
+    with ThreadPoolExecutor(max_workers=1) as beside:
+        hashed = beside.submit(source.sha256)
+        layout, table, heading = _read(lines, wishes, channels, missing, progress)
     columns = tuple(
         Column(
             heading.names[place],
@@ -64,7 +68,7 @@ def read_text(
     for number, line in enumerate(table.footer, start=1):
         metadata[f"footer {number}"] = line[:200]
     provenance = Provenance(
-        file, source.sha256, table.lines, (_words(source, layout, heading, table),), metadata
+        file, hashed.result(), table.lines, (_words(source, layout, heading, table),), metadata
     )
     return TextLog(columns, provenance, heading.rate)
 

@@ -48,8 +48,8 @@ class Source:
     ----------
     name : str
         The file as the caller wrote it.
-    sha256 : str
-        Of the file as it lies on the disk.
+    disk : memoryview
+        The file as it lies on the disk.
     text : memoryview
         UTF-8 without a byte order mark; lines end in \\n or \\r\\n.
     encoding : str
@@ -61,11 +61,15 @@ class Source:
     """
 
     name: str
-    sha256: str
+    disk: memoryview
     text: memoryview
     encoding: str
     packed: bool = False
     on_disk: bool = False
+
+    def sha256(self) -> str:
+        """Of the file as it lies on the disk."""
+        return hashlib.sha256(self.disk).hexdigest()
 
 
 def open_bytes(name: str) -> memoryview:
@@ -111,8 +115,7 @@ def open_text(name: str, encoding: str | None = None) -> Source:
     LogError
         codes "no-such-file", "unreadable", "empty", "truncated", "too-large", "binary", "encoding".
     """
-    raw = open_bytes(name)
-    sha256 = hashlib.sha256(raw).hexdigest()
+    disk = raw = open_bytes(name)
     packed = bytes(raw[:2]) == b"\x1f\x8b"
     if packed:
         raw = memoryview(_unpacked(raw, name))
@@ -124,7 +127,7 @@ def open_text(name: str, encoding: str | None = None) -> Source:
     text, found = _decoded(raw, name, encoding)
     plain = _plain_line_ends(text)
     same = plain.obj is raw.obj and len(plain) == len(raw)
-    return Source(name, sha256, plain, found, packed, same and not packed)
+    return Source(name, disk, plain, found, packed, same and not packed)
 
 
 def _unpacked(raw: memoryview, name: str) -> bytes:
