@@ -146,6 +146,46 @@ def test_the_drive_is_found_without_its_name(name: str) -> None:
         assert {event.channel for event in find_events(one)} == {"u"}
 
 
+@pytest.mark.parametrize(("noise", "quantum"), [(0.0005, 0.0), (0.005, 0.01), (0.05, 0.0)])
+def test_answers_alone_show_their_start_and_overshoot(noise: float, quantum: float) -> None:
+    """Sixty second-order steps of any damping and speed: each one step, its 95 % intervals hold in 87 %.
+
+    0.95 less 2.8 σ of the binomial, for start and overshoot each.
+    """
+    rng = np.random.default_rng(22)
+    t = np.arange(8000) * INTERVAL
+    starts = overshoots = 0
+    for _ in range(60):
+        zeta, omega, at = rng.uniform(0.15, 0.9), 10 ** rng.uniform(0.9, 2.2), rng.uniform(1, 3)
+        x, damped = (t - at).clip(0), omega * math.sqrt(1 - zeta**2)
+        ring = np.cos(damped * x) + zeta * omega / damped * np.sin(damped * x)
+        samples = (
+            5
+            + np.where(t > at, 1 - np.exp(-zeta * omega * x) * ring, 0.0)
+            + noise * rng.standard_normal(8000)
+        )
+        if quantum:
+            samples = np.round(samples / quantum) * quantum
+        (event,) = find_events(find_faults(Record((Channel("y", samples),), 0.0, INTERVAL)))
+        assert event.kind == "step"
+        low, high = event.start.interval()
+        starts += low <= at <= high
+        low, high = event.features["overshoot"].interval()
+        overshoots += low <= math.exp(-math.pi * zeta / math.sqrt(1 - zeta**2)) <= high
+    assert min(starts, overshoots) >= 52, (starts, overshoots)
+
+
+def test_without_a_level_after_there_is_no_overshoot() -> None:
+    """A ring that has not died away when the record ends: start, but neither level after nor features."""
+    t = np.arange(5000) * INTERVAL
+    x = (t - 2).clip(0)
+    samples = np.where(t > 2, 1 - np.exp(-0.2 * x) * np.cos(5 * x), 0.0)
+    noise = 0.005 * np.random.default_rng(23).standard_normal(5000)
+    (event,) = find_events(Record((Channel("y", samples + noise),), 0.0, INTERVAL))
+    assert event.start.value == pytest.approx(2.0, abs=0.03)
+    assert math.isnan(event.level_after.value) and not event.features
+
+
 def test_a_free_decay_is_a_release() -> None:
     """A record that begins displaced and dies away: one release at its first sample, start's u unknown."""
     samples = np.exp(-0.5 * T) * np.cos(6 * T) + 0.002 * np.random.default_rng(10).standard_normal(COUNT)

@@ -13,7 +13,7 @@ Array = NDArray[np.float64]
 
 # a slope of the level is followed from this many standard uncertainties on
 DRIFT_SEEN = 5.0
-LONGEST = 1 << 17
+LONGEST = 1 << 15
 
 
 def correlation_length(residual: Array) -> float:

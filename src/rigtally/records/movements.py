@@ -25,7 +25,7 @@ STRAIGHT = 0.015
 # plateau of a pulse, as a share of the rests before and after it
 SHORT_PLATEAU = 0.05
 # samples of a movement that count as a step whatever its shape
-STEP_SAMPLES = 4
+STEP_SAMPLES = 12
 
 
 def movements(
@@ -117,7 +117,8 @@ def _movement(
         kind = "ramp"
         features = _ramp_features(features, channel.unit)
     if after_range is None:
-        after = replace(UNKNOWN, unit=channel.unit)
+        # without the level after there is no amplitude to take shares of
+        features = {}
     return Event(0, kind, channel.name, channel.unit, start, before, after, window, features)
 
 
@@ -159,13 +160,16 @@ def _dies_away(samples: Array) -> bool:
 def _is_ramp(time: Array, samples: Array, reference: float, amplitude: float, sigma: float) -> bool:
     """Straight from 5 % to 95 % over more samples than a step has."""
     height = (samples - reference) / amplitude
-    passed = np.flatnonzero(height >= 0.95)
+    length = int(np.clip((sigma / abs(amplitude) / 0.02) ** 2, 1, max(height.size // 50, 1)))
+    smooth = np.convolve(height, np.full(length, 1.0 / length), mode="same") if length > 1 else height
+    passed = np.flatnonzero(smooth >= 0.95)
     if passed.size == 0:
         return False
     top = int(passed[0])
-    below = np.flatnonzero(height[:top] <= 0.05)
+    below = np.flatnonzero(smooth[:top] <= 0.05)
     bottom = int(below[-1]) if below.size else 0
-    if top - bottom <= STEP_SAMPLES or float(height.max()) > 1.1 + 5.0 * sigma / abs(amplitude):
+    overshoot = float(smooth.max()) - 1.0 - 5.0 * sigma / abs(amplitude) / math.sqrt(length)
+    if top - bottom <= max(STEP_SAMPLES, 2 * length) or overshoot > 0.05:
         return False
     t, y = time[bottom + 1 : top], height[bottom + 1 : top]
     if y.size < 3:
@@ -175,7 +179,8 @@ def _is_ramp(time: Array, samples: Array, reference: float, amplitude: float, si
     # noise averages out over tenths of the ramp
     blocks = np.array([part.mean() for part in np.array_split(rest, min(10, y.size))])
     noise = sigma / abs(amplitude) / math.sqrt(max(y.size / 10, 1.0))
-    return float(np.sqrt(np.mean(blocks**2))) < STRAIGHT + 2.0 * noise
+    # under noise that hides a bend the shape is not known, and a step is the safer word
+    return noise < 0.5 * STRAIGHT and float(np.sqrt(np.mean(blocks**2))) < STRAIGHT + noise
 
 
 def _ramp_features(features: Mapping[str, Uncertain], unit: str) -> dict[str, Uncertain]:

@@ -13,8 +13,11 @@ Array = NDArray[np.float64]
 
 # powers of (t − t₀)₊ by which a movement may take off: a jump, a ramp, a first-order rise, a second-order
 # rise
-TAKE_OFFS = ((0,), (1,), (1, 2), (2,), (2, 3))
-HIGHEST = 0.25
+TAKE_OFFS = ((0,), (1,), (1, 2), (1, 2, 3), (2,), (2, 3), (2, 3, 4))
+# height up to which the take-off is followed: the less noise, the lower, so that the powers left out do not
+# show
+LOWEST, HIGHEST = 0.04, 0.25
+FEWEST = 8
 GRID = 240
 
 
@@ -51,7 +54,9 @@ def onset(time: Array, samples: Array, level: Uncertain, amplitude: float, sigma
     if first is None or first == 0:
         return Uncertain(float(time[0]), math.nan, "s")
     high = np.flatnonzero(smooth[first:] >= HIGHEST)
-    top = first + int(high[0]) if high.size else height.size - 1
+    quarter = first + int(high[0]) if high.size else height.size - 1
+    near = np.flatnonzero(smooth[first:] >= float(np.clip(1.5 * math.sqrt(noise), LOWEST, HIGHEST)))
+    top = min(max(first + int(near[0]), first + FEWEST), quarter) if near.size else quarter
     if length == 1 and top - first < 3:
         return _between(time, first)
     # the moving mean rises half its length early

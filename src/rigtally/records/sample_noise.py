@@ -10,7 +10,8 @@ Array = NDArray[np.float64]
 # median |x| of a normal variate in standard deviations
 MEDIAN_TO_SIGMA = 1.482602218505602
 PROBE = 100_000
-FLOOR_SAMPLES = 1 << 17
+FLOOR_SAMPLES = 1 << 16
+LONG, STRETCH = 1 << 17, 1 << 13
 
 
 def noise_sigma(samples: Array) -> float:
@@ -29,11 +30,37 @@ def noise_sigma(samples: Array) -> float:
     float
         In the unit of the samples; NaN with fewer than 8 differences; 0 where most of them vanish.
     """
-    third = np.diff(samples, 3)
+    if samples.size > LONG:
+        # sixteen stretches of a long record tell its noise
+        starts = np.linspace(0, samples.size - STRETCH, 16).astype(int)
+        third = np.diff(samples[starts[:, None] + np.arange(STRETCH)], 3, axis=1).ravel()
+    else:
+        third = np.diff(samples, 3)
     third = third[np.isfinite(third)]
     if third.size < 8:
         return float("nan")
-    return float(MEDIAN_TO_SIGMA * np.median(np.abs(third)) / np.sqrt(20.0))
+    return float(MEDIAN_TO_SIGMA * _grouped_median(np.abs(third)) / np.sqrt(20.0))
+
+
+def _grouped_median(moduli: Array) -> float:
+    """Median of moduli that may be multiples of a step: then by a straight line inside the class it falls
+    into.
+
+    Without it the median jumps from one multiple to the next as the noise grows.
+    """
+    median = float(np.median(moduli))
+    slack = 1e-6 * max(median, float(np.mean(moduli)))
+    same = np.abs(moduli - median) <= slack
+    share = float(np.mean(same))
+    if share < 0.05:
+        return median
+    above = moduli[moduli > median + slack]
+    if above.size == 0 or (median <= slack and share > 0.9):
+        return median
+    step = float(above.min()) - median
+    lower = max(median - 0.5 * step, 0.0)
+    below = float(np.mean(moduli < median - slack))
+    return lower + (median + 0.5 * step - lower) * (0.5 - below) / share
 
 
 def floor_sigma(samples: Array) -> float:

@@ -89,19 +89,41 @@ def stretches(samples: Array, resolution: float = float("nan")) -> Stretches:
     corners = polyline(means, tolerance)
     flat = _flat(means, corners, scatter, DRIFT * size, max(3, math.ceil(8 / block)))
     ranges = [(begin * block, count if end == blocks else end * block) for begin, end in flat]
-    levels = _without_tops(_sharpened(samples, ranges, block, sigma, tolerance), count)
+    sharp = _sharpened(samples, ranges, block, sigma, tolerance)
+    levels = _without_tops(sharp, np.asarray(corners) * block, count)
     return Stretches(tuple(levels), tolerance, sigma, count)
 
 
-def _without_tops(levels: list[tuple[int, int]], count: int) -> list[tuple[int, int]]:
-    """Levels without those shorter than half the movement next to them: tops of a swing, bends of a rise."""
+def _without_tops(
+    levels: list[tuple[int, int]], corners: NDArray[np.int64], count: int
+) -> list[tuple[int, int]]:
+    """Levels without tops of a swing and bends of a rise.
+
+    Those are shorter than the movement next to them. The record's first and last level may be, as a short
+    rest before a long ring is; but not shorter than three times the straight pieces that touch it.
+    """
     kept = list(levels)
+    pieces = np.diff(corners)
+
+    def least(begin: int, end: int, *, first: bool = False, last: bool = False) -> float:
+        """What a level before (the first) or after (the last) the movement [begin, end) has to be long."""
+        inside = pieces[(corners[1:] > begin) & (corners[:-1] < end)]
+        if end <= begin or inside.size == 0:
+            return 1.0
+        if not (first or last):
+            return float(end - begin)
+        touching = int((inside[:2] if first else inside[-2:]).max())
+        return float(min(end - begin, 3 * touching))
+
     while len(kept) > 1:
-        before = [kept[0][0], *(b[0] - a[1] for a, b in itertools.pairwise(kept))]
-        after = [*before[1:], count - kept[-1][1]]
-        share = [(e - b) / max(m, n, 1) for (b, e), m, n in zip(kept, before, after, strict=True)]
+        edges = [0, *(k for level in kept for k in level), count]
+        gaps = list(zip(edges[::2], edges[1::2], strict=True))
+        share = [
+            (end - begin) / max(least(*gaps[k], last=k == len(kept) - 1), least(*gaps[k + 1], first=k == 0))
+            for k, (begin, end) in enumerate(kept)
+        ]
         worst = int(np.argmin(share))
-        if share[worst] >= 0.5:
+        if share[worst] >= 1.0:
             break
         del kept[worst]
     return kept

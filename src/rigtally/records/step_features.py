@@ -26,6 +26,8 @@ REACH = {0.1: (0.04, 0.12), 0.5: (0.12, 0.12), 0.9: (0.12, 0.12)}
 
 # samples in the transition below which the interpolation between them is doubtful
 SAMPLED_WELL = 20
+# transition durations after the 90 % instant within which the overshoot is looked for
+LATEST_PEAK = 20.0
 
 
 def step_features(
@@ -109,8 +111,10 @@ class _Wave:
         self.sigma = sigma
         self.u_first = u_first
         self.u_last = u_last
-        self.smooth = _smoothed(height, _smoothing(sigma, height.size))
         self.fast, self.run = self._transition()
+        # a crest is several runs wide: a sixth of one flattens it by less than a thousandth
+        self.window = max(self.run // 6, 1) | 1
+        self.tops = _smoothed(height, self.window)
 
     def _transition(self) -> tuple[Array, int]:
         """The wave smoothed by no more than a sixth of its 10-90 % run, and that run in samples.
@@ -212,10 +216,10 @@ class _Wave:
     def excursions(self, ten: float, ninety: float, origin: Uncertain) -> dict[str, Uncertain]:
         """Overshoot past the level after, undershoot before the level before; shares of the amplitude."""
         duration = max(ninety - ten, float(np.median(np.diff(self.time))))
-        later = np.flatnonzero(self.time >= ninety)
+        later = np.flatnonzero((self.time >= ninety) & (self.time <= ninety + LATEST_PEAK * duration))
         earlier = np.flatnonzero((self.time <= ten) & (self.time >= ten - 3.0 * duration))
-        over, at = self._peak(later, self.height - 1.0, self.smooth - 1.0, self.u_last)
-        under, _ = self._peak(earlier, -self.height, -self.smooth, self.u_first)
+        over, at = self._peak(later, self.height - 1.0, self.tops - 1.0, self.u_last)
+        under, _ = self._peak(earlier, -self.height, -self.tops, self.u_first)
         out = {"overshoot": over, "undershoot": under}
         if over.value > 0.0 and math.isfinite(at.value):
             out["peak_time"] = Uncertain(at.value - origin.value, math.hypot(at.u, _zero(origin.u)), "s")
@@ -261,7 +265,7 @@ class _Wave:
         return Uncertain(height, u), Uncertain(self.time[top] + float(fine[best]) * scale, u_at, "s")
 
     def _u_smooth(self) -> float:
-        return self.sigma / math.sqrt(_smoothing(self.sigma, self.height.size))
+        return self.sigma / math.sqrt(self.window)
 
     def settling(self, band: float, origin: Uncertain) -> Uncertain:
         """From the start to the last instant outside the band; NaN where noise or the level's u hide the
