@@ -43,6 +43,8 @@ def factors(beta: Any) -> tuple[Any, Any, Any, Any]:
     r, i, dr, di
         R/R_poiseuille, I/I_plug and their derivatives by beta.
     """
+    if np.ndim(beta) == 0:
+        return _factors_at(float(beta))
     b = np.asarray(beta, dtype=float)
     small = b < SERIES_BELOW**2
     near = _series(np.where(small, b, 0.0))
@@ -51,6 +53,12 @@ def factors(beta: Any) -> tuple[Any, Any, Any, Any]:
     far = _bessel(np.where(small, 1.0, b))
     r, i, dr, di = (np.where(small, a, c) for a, c in zip(near, far, strict=True))
     return r, i, dr, di
+
+
+@lru_cache(maxsize=256)
+def _factors_at(beta: float) -> tuple[Any, Any, Any, Any]:
+    """The factors at one beta (a line's resistance and inertance ask for the same)."""
+    return _series(beta) if beta < SERIES_BELOW**2 else _bessel(beta)
 
 
 def _bessel(b: Any) -> tuple[Any, Any, Any, Any]:
@@ -119,7 +127,7 @@ def line_values(
     if friction == "steady":
         return LineValues(steady, plug * (4.0 / 3.0))
     beta = omega * density * bore**2 / (viscosity * 4.0)
-    if np.all(value_of(beta) == 0):
+    if np.ndim(value_of(beta)) == 0 and value_of(beta) == 0:
         return LineValues(steady, plug * (4.0 / 3.0))
     r, i, dr, di = factors(value_of(beta))
     if not isinstance(beta, Dual):

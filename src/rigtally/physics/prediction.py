@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -24,6 +25,7 @@ from rigtally.quantities.uncertain import Uncertain
 
 Array = NDArray[np.float64]
 Progress = Callable[[int, int], None]
+ROUNDING = 1e-13
 
 
 def predict(rig: Rig, *, monte_carlo: int = 0, seed: int = 0, progress: Progress | None = None) -> Prediction:
@@ -43,7 +45,7 @@ def predict(rig: Rig, *, monte_carlo: int = 0, seed: int = 0, progress: Progress
         The network has no unique or no proper answer; the elements are named.
     """
     model = open_model(rig)
-    solved = model.solve()
+    solved = _without_rounding(model.solve(), model.values.nominal)
     form = model.form
     inputs = model.values.inputs
     u = np.array([x.u for x in inputs])
@@ -110,6 +112,13 @@ def open_model(rig: Rig) -> LineModel:
     return model if model.form.degree <= POLYNOMIAL_ORDER else LargeModel(rig, network)
 
 
+def _without_rounding(solved: Solved, nominal: Array) -> Solved:
+    """Relative sensitivities below 1e-13 are rounding of an exact zero (a gain that is 1 by structure)."""
+    relative = np.abs(solved.sensitivity * nominal)
+    zero = (relative < ROUNDING * np.abs(solved.theta)[:, None]) & (nominal != 0.0)
+    return replace(solved, sensitivity=np.where(zero, 0.0, solved.sensitivity))
+
+
 def _spread(sensitivity: Array, u: Array) -> Array:
     """Standard uncertainty of independent inputs: √Σ (c u)² over the last axis.
 
@@ -120,9 +129,7 @@ def _spread(sensitivity: Array, u: Array) -> Array:
     return out
 
 
-def _budget(
-    model: LineModel, sensitivity: Array, u: Array
-) -> dict[str, list[tuple[str, str, float]]]:
+def _budget(model: LineModel, sensitivity: Array, u: Array) -> dict[str, list[tuple[str, str, float]]]:
     """Share of each value in the variance of each parameter, largest first; they sum to 1."""
     out: dict[str, list[tuple[str, str, float]]] = {}
     for name, row in zip(model.form.names, sensitivity, strict=True):

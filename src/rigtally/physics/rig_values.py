@@ -41,6 +41,7 @@ class RigValues:
         self.rig = rig
         self.symbols = tuple(symbols)
         self.friction: dict[str, FrictionModel] = {}
+        self._drawn: dict[tuple[str, str], tuple[list[Array], Array]] = {}
         self.names: tuple[str, ...] = ()
         self.names = self._used()
 
@@ -174,17 +175,34 @@ class RigValues:
                 code="missing-value",
             )
         current = {name: value_of(self._named(named, name)) for name in self.rig.values}
-        size = max((np.size(x) for x in current.values()), default=1)
-        if size > 1:
-            rows = [
-                property_value(self.rig, medium, prop, {n: float(np.broadcast_to(x, size)[k]) for n, x in
-                                                        current.items()})[0]
-                for k in range(size)
-            ]  # fmt: skip
-            return np.array(rows)
+        if any(np.size(x) > 1 for x in current.values()):
+            return self._drawn_property(medium, prop, current)
         value, slopes = property_value(self.rig, medium, prop, {n: float(x) for n, x in current.items()})
         partials: dict[str, Any] = {}
         for name, slope in slopes.items():
             for source, inner in partials_of(named.get(name, 0.0)).items():
                 partials[source] = partials.get(source, 0.0) + slope * inner
         return Dual(value, partials) if partials else value
+
+    def _drawn_property(self, medium: str, prop: str, current: Mapping[str, Any]) -> Array:
+        """A property at many draws; kept while the draws of what it follows from stay the same."""
+        from rigtally.physics.media import property_value
+
+        sources = [n for n in self.rig.media[medium].values() if isinstance(n, str) and n in current]
+        columns = [np.asarray(current[n], dtype=float) for n in sources]
+        kept = self._drawn.get((medium, prop))
+        if kept is not None and all(
+            a is b or np.array_equal(a, b) for a, b in zip(kept[0], columns, strict=True)
+        ):
+            return kept[1]
+        size = max((c.size for c in columns), default=1)
+        rows = np.stack([np.broadcast_to(c, (size,)) for c in columns]) if columns else np.zeros((0, size))
+        nominal = {name: u.value for name, u in self.rig.values.items()}
+        found = np.array(
+            [
+                property_value(self.rig, medium, prop, {**nominal, **dict(zip(sources, row, strict=True))})[0]
+                for row in rows.T.tolist()
+            ]
+        )
+        self._drawn[medium, prop] = (columns, found)
+        return found

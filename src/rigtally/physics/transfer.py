@@ -112,12 +112,17 @@ class Transfer:
         self.weights = np.ldexp(product, np.clip(binary - lead, -1022, 1023))
         self._base = np.where(self.nominal == 0.0, 1.0, self.nominal)
         self._uses = [(p, np.flatnonzero(exponents[:, p])) for p in range(count)]
+        self._picked = _picked(exponents)
         self._sum = np.zeros((self.size, len(slots)))
         self._sum[self.slots, np.arange(len(slots))] = 1.0
 
     def _terms(self, symbols: Array) -> Array:
         """Values of the products: (…, P) symbols -> (…, terms)."""
         ratio = np.asarray(symbols, dtype=float) / self._base
+        if ratio.ndim == 1:
+            both = np.concatenate([ratio, 1.0 / ratio, [1.0]])
+            single: Array = self.weights * np.multiply.reduce(both[self._picked], axis=1)
+            return single
         terms = np.broadcast_to(self.weights, (*ratio.shape[:-1], self.weights.size)).copy()
         for p, where in self._uses:
             if where.size:
@@ -152,6 +157,17 @@ class Transfer:
             by[:, :width],
             by[:, width:].reshape(-1, q, r, width),
         )
+
+
+def _picked(exponents: NDArray[np.int_]) -> NDArray[np.int_]:
+    """Each term's factors as places in [x, 1/x, 1], the last filling up."""
+    count = exponents.shape[1]
+    width = max(1, int(np.abs(exponents).sum(axis=1).max(initial=0)))
+    out = np.full((exponents.shape[0], width), 2 * count)
+    for t, row in enumerate(exponents):
+        places = [p + (count if e < 0 else 0) for p, e in enumerate(row) for _ in range(abs(int(e)))]
+        out[t, : len(places)] = places
+    return out
 
 
 def _aligned(network: Network, expansion: Expansion) -> tuple[Polynomial, list[list[Polynomial]], int]:
