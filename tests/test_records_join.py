@@ -44,7 +44,7 @@ def test_offset_and_rate_lie_within_their_u(kind: str, noise: float) -> None:
     pairs."""
     rng = np.random.default_rng(50)
     aligned = rated = 0
-    for _ in range(40):
+    for _ in range(25):
         offset, rate = rng.uniform(-2, 2), 1e-4 * rng.standard_normal()
         first, second, _ = pair(kind, noise, rng, offset, rate)
         fit = fit_clocks(first, second, "p", "p")
@@ -52,7 +52,7 @@ def test_offset_and_rate_lie_within_their_u(kind: str, noise: float) -> None:
         off = fit.offset.value + (1 + fit.rate.value) * middle - offset - (1 + rate) * middle
         aligned += abs(off) < 1.96 * fit.alignment.u
         rated += abs(fit.rate.value - rate) < 1.96 * fit.rate.u
-    assert min(aligned, rated) >= 35
+    assert min(aligned, rated) >= 22
     assert fit.alignment.u < (0.004 if noise == 0.1 else 5e-4)
 
 

@@ -214,7 +214,7 @@ def _pulse(
     base = before.value
     bump = (samples[first:stop] - base) * math.copysign(1.0, height)
     above = np.flatnonzero(bump >= 0.5 * abs(height))
-    step = float(np.median(np.diff(time)))
+    step = float(np.median(np.diff(time[:4096])))
     width = float(time[first + above[-1]] - time[first + above[0]]) + step
     start = onset(time[part.start : first + above[-1] + 1], samples[part.start : first + above[-1] + 1],
                   before, height, parts.sigma)  # fmt: skip
@@ -235,7 +235,7 @@ def _numbered(events: list[Event], time: Array) -> tuple[Event, ...]:
     """Numbers in order; a window ends where the next event begins and holds half of the rest before its
     own."""
     out = []
-    step = float(np.median(np.diff(time)))
+    step = float(np.median(np.diff(time[:4096])))
     for k, event in enumerate(events):
         begin, end = event.window
         if k > 0 and event.kind in ("step", "ramp", "pulse"):

@@ -111,6 +111,7 @@ class _Wave:
         self.sigma = sigma
         self.u_first = u_first
         self.u_last = u_last
+        self.step = float(np.median(np.diff(time[:4096])))
         self.fast, self.run = self._transition()
         # a crest is several runs wide: a sixth of one flattens it by less than a thousandth
         self.window = max(self.run // 6, 1) | 1
@@ -162,7 +163,7 @@ class _Wave:
         back, ahead = widened * REACH[share][0], widened * REACH[share][1]
         if share < 0.5:
             back = min(back, REACH[share][0])
-        step = float(np.median(np.diff(self.time)))
+        step = self.step
         middle_time = 0.5 * float(self.time[row] + self.time[row + 1])
         found = None
         # noise chose the first window: its middle is moved to the root found in it
@@ -215,7 +216,7 @@ class _Wave:
 
     def excursions(self, ten: float, ninety: float, origin: Uncertain) -> dict[str, Uncertain]:
         """Overshoot past the level after, undershoot before the level before; shares of the amplitude."""
-        duration = max(ninety - ten, float(np.median(np.diff(self.time))))
+        duration = max(ninety - ten, self.step)
         later = np.flatnonzero((self.time >= ninety) & (self.time <= ninety + LATEST_PEAK * duration))
         earlier = np.flatnonzero((self.time <= ten) & (self.time >= ten - 3.0 * duration))
         over, at = self._peak(later, self.height - 1.0, self.tops - 1.0, self.u_last)
