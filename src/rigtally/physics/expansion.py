@@ -22,7 +22,7 @@ from rigtally.errors import RigError
 from rigtally.physics.network import FIELD, MASK, Network, Polynomial, add
 
 PRIME = (1 << 61) - 1
-PRODUCT_LIMIT = 400_000  # multiplications of terms after which a network counts as large
+PRODUCT_LIMIT = 150_000  # multiplications of terms after which a network counts as large
 
 
 class TooLarge(Exception):
@@ -51,7 +51,7 @@ def expand(network: Network, limit: int = PRODUCT_LIMIT) -> Expansion:
     """
     rows, outputs, owners = eliminate(network)
     size = len(network.columns)
-    _check_rank(network, rows, owners, size)
+    check_rank(network, rows, owners, size)
     rows, outputs, owners = relevant(rows, outputs, owners, size)
     used = sorted({c for row in rows for c in row if c < size})
     if len(used) != len(rows):
@@ -144,7 +144,7 @@ def relevant(
     return [rows[k] for k in keep], trimmed, [owners[k] for k in keep]
 
 
-def _check_rank(network: Network, rows: list[Row], owners: list[str], size: int) -> None:
+def check_rank(network: Network, rows: list[Row], owners: list[str], size: int) -> None:
     """Refuse equations that leave a variable free, or contradict each other, whatever the values.
 
     Gauss's elimination modulo a prime, at a random s and random symbols.

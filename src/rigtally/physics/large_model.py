@@ -140,7 +140,7 @@ class LargeModel(LineModel):
         return self.structure
 
     def _form_of(self, structure: Structure) -> Form:
-        _refuse_unmoved(self.rig, structure.powers)
+        self.refuse_unmoved(structure.powers)
         for reading, row in zip(self.rig.readings, structure.powers, strict=True):
             for drive, free in zip(self.rig.drives, row, strict=True):
                 if free and free[-1] > structure.degree:
@@ -157,7 +157,7 @@ class LargeModel(LineModel):
         power = dominant.power
         powers = [[(power[i][j],) if live else () for j, live in enumerate(row)] for i, row in
                   enumerate(dominant.live)]  # fmt: skip
-        _refuse_unmoved(self.rig, powers)
+        self.refuse_unmoved(powers)
         return matrix_form([r.name for r in self.rig.readings], [d.name for d in self.rig.drives], powers, 2)
 
     def _check(self, state: _State) -> None:
@@ -281,17 +281,6 @@ class LargeModel(LineModel):
             d_nums[:, i, j, power] = sensitivity.T @ slope
         d_den = sensitivity[count:].T @ d_shared
         return Solved(omega, den, nums, d_den, d_nums, theta, sensitivity, state.poles, d_poles.T)
-
-
-def _refuse_unmoved(rig: Rig, powers: Any) -> None:
-    for reading, row in zip(rig.readings, powers, strict=True):
-        if not any(row):
-            raise RigError(
-                f"no drive moves reading {reading.name!r}",
-                where=rig.file,
-                do="connect it to a drive through elements, or leave it out",
-                code="unmoved-reading",
-            )
 
 
 def _circle(poles: ComplexArray, order: int) -> ComplexArray:

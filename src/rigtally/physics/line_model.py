@@ -4,12 +4,14 @@ from __future__ import annotations
 
 import math
 from abc import ABC, abstractmethod
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from rigtally.errors import RigError
 from rigtally.forms.named import Form
 from rigtally.physics.line_frequency import solve_frequency
 from rigtally.physics.network import Network
@@ -91,6 +93,23 @@ class LineModel(ABC):
             return float(solve_frequency(at, np.array([float(first)]), self.rig.file)[0])
         begin = np.broadcast_to(first, values.shape[:1]).astype(float)
         return solve_frequency(lambda w: self.frequency(values, w), begin, self.rig.file)
+
+    def refuse_unmoved(self, powers: Sequence[Sequence[Sequence[int]]]) -> None:
+        """Every reading must be moved by some drive.
+
+        Raises
+        ------
+        RigError
+            code "unmoved-reading".
+        """
+        for reading, row in zip(self.rig.readings, powers, strict=True):
+            if not any(row):
+                raise RigError(
+                    f"no drive moves reading {reading.name!r}",
+                    where=self.rig.file,
+                    do="connect it to a drive through elements, or leave it out",
+                    code="unmoved-reading",
+                )
 
     def womersley(self, line: Element, omega: float | None = None) -> float:
         """Womersley number of a line at the rig's frequency (or at `omega`)."""

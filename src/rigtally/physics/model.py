@@ -41,14 +41,7 @@ class Model(LineModel):
 
     def _form(self) -> Form:
         powers = self.reduction.powers
-        for reading, row in zip(self.rig.readings, powers, strict=True):
-            if not any(row):
-                raise RigError(
-                    f"no drive moves reading {reading.name!r}",
-                    where=self.rig.file,
-                    do="connect it to a drive through elements, or leave it out",
-                    code="unmoved-reading",
-                )
+        self.refuse_unmoved(powers)
         return matrix_form(
             [r.name for r in self.rig.readings],
             [d.name for d in self.rig.drives],

@@ -14,7 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from rigtally.physics.expansion import eliminate, relevant
+from rigtally.physics.expansion import check_rank, eliminate, relevant
 from rigtally.physics.network import FIELD, MASK, Network
 
 Array = NDArray[np.float64]
@@ -194,7 +194,8 @@ class System:
 
     def __init__(self, network: Network) -> None:
         width = len(network.columns)
-        rows, outputs, _ = eliminate(network)
+        rows, outputs, owners = eliminate(network)
+        check_rank(network, rows, owners, width)
         rows, outputs, _ = relevant(rows, outputs, ["" for _ in rows], width)
         self.equations = (rows, outputs)
         used = sorted({c for row in rows for c in row if c < width})

@@ -18,6 +18,7 @@ from rigtally.physics.limits import line_limits
 from rigtally.physics.line_model import LineModel, Solved
 from rigtally.physics.model import Model
 from rigtally.physics.network import assemble
+from rigtally.physics.pencil import System
 from rigtally.physics.prediction_result import Finding, Prediction
 from rigtally.physics.rig import Rig
 from rigtally.physics.tolerance_draws import drawn_inputs, monte_carlo_parameters
@@ -105,6 +106,8 @@ def predict(rig: Rig, *, monte_carlo: int = 0, seed: int = 0, progress: Progress
 def open_model(rig: Rig) -> LineModel:
     """Expanded determinants where they are few and the order is at most 10, else the pencil."""
     network = assemble(rig)
+    if len(rig.elements) > POLYNOMIAL_ORDER and System(network).order > POLYNOMIAL_ORDER:
+        return LargeModel(rig, network)
     try:
         model = Model(rig, network)
     except TooLarge:
