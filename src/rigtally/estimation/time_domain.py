@@ -8,6 +8,7 @@ and 16; Golub & Pereyra (1973) for the projection (both from memory).
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import replace
 
 import numpy as np
@@ -62,20 +63,32 @@ def inert_parameters(trial: Trial) -> frozenset[str]:
 
 
 def _first(problem: Problem, carrier: Carrier, start: Array | None) -> Found:
-    """White-noise fits from the candidate starts; the best one, finished."""
-
-    def reduced(theta: Array) -> tuple[Array, Array]:
-        residual, jacobian, _ = problem.reduced(theta)
-        return residual, jacobian
-
-    candidates = [start] if start is not None else starts(problem.trial)
+    """White-noise fits: short ones on each view from its starts, the best few on the whole, the best finished."""
+    trial = problem.trial
+    if start is not None:
+        return carrier.minimise(_reduced(problem), start, evaluations=200)
+    ends = []
+    for view, thetas in starts(trial):
+        close = Problem(replace(trial, segments=(view,)), (view,))
+        for theta in thetas:
+            found = _tried(carrier, close, theta, 15)
+            if found is not None:
+                ends.append(found.theta)
+    scored = []
+    for theta in ends:
+        _, shared, dead = trial.form.split(_normal(trial, theta))
+        better, cost = problem.best_numerator(shared, dead)
+        if np.isfinite(cost) and np.all(np.isfinite(better)):
+            scored.append((cost, better))
+    scored.sort(key=lambda pair: pair[0])
     best: Found | None = None
-    for theta in candidates:
-        try:
-            found = carrier.minimise(reduced, theta, evaluations=40)
-        except (ValueError, np.linalg.LinAlgError, FloatingPointError):
+    done: list[float] = []
+    for cost, theta in scored:
+        if len(done) == 3 or any(cost <= other * (1 + 1e-3) for other in done):
             continue
-        if np.isfinite(found.cost) and (best is None or found.cost < best.cost):
+        done.append(cost)
+        found = _tried(carrier, problem, theta, 12)
+        if found is not None and (best is None or found.cost < best.cost):
             best = found
     if best is None:
         raise FitError(
@@ -83,7 +96,26 @@ def _first(problem: Problem, carrier: Carrier, start: Array | None) -> Found:
             do="look at the log with `rigtally inspect`, or try another form",
             code="no-convergence",
         )
-    return carrier.minimise(reduced, best.theta, evaluations=200)
+    return best if best.converged else carrier.minimise(_reduced(problem), best.theta, evaluations=200)
+
+
+def _tried(carrier: Carrier, problem: Problem, theta: Array, evaluations: int) -> Found | None:
+    """A fit of at most so many evaluations, None where it leaves the finite numbers."""
+    try:
+        found = carrier.minimise(_reduced(problem), theta, evaluations=evaluations)
+    except (ValueError, np.linalg.LinAlgError, FloatingPointError):
+        return None
+    return found if np.isfinite(found.cost) else None
+
+
+def _reduced(problem: Problem) -> Callable[[Array], tuple[Array, Array]]:
+    """Residual and Jacobian as the minimiser takes them."""
+
+    def reduced(theta: Array) -> tuple[Array, Array]:
+        residual, jacobian, _ = problem.reduced(theta)
+        return residual, jacobian
+
+    return reduced
 
 
 def _with_noise(problem: Problem, carrier: Carrier, found: Found) -> Found:
@@ -92,18 +124,18 @@ def _with_noise(problem: Problem, carrier: Carrier, found: Found) -> Found:
     if not isinstance(stated, str):
         problem.noise = [Noise(np.array([1.0]), float(stated))] * problem.outputs
 
-    def reduced(theta: Array) -> tuple[Array, Array]:
-        residual, jacobian, _ = problem.reduced(theta)
-        return residual, jacobian
-
+    reduced = _reduced(problem)
     for _ in range(ROUNDS):
         if isinstance(stated, str):
             spent = problem.reduced(found.theta)[2] + len(carrier.varying)
             pieces = problem.residuals(found.theta)
             each = round(spent / problem.outputs)
             problem.noise = [estimate(rows, stated == "estimated", each) for rows in pieces]
+            if all(noise.white for noise in problem.noise) and problem.outputs == 1:
+                residual = problem.reduced(found.theta)[0]
+                return replace(found, cost=float(residual @ residual))
         found = carrier.minimise(reduced, found.theta, evaluations=100)
-        if all(noise.white for noise in problem.noise) and problem.outputs == 1:
+        if not isinstance(stated, str):
             break
     return found
 
@@ -205,13 +237,8 @@ def profile(trial: Trial, result: RoadResult, name: str, probability: float = 0.
     carrier = Carrier(trial, inert_parameters(trial))
     start = np.where(np.isfinite(result.theta), result.theta, 1.0)
     found = _with_noise(problem, carrier, Found(start, result.cost, 0, True))
-    problem = replace(problem)
     rise = coverage_factor(probability, result.dof) ** 2
-
-    def reduced(theta: Array) -> tuple[Array, Array]:
-        residual, jacobian, _ = problem.reduced(theta)
-        return residual, jacobian
-
+    reduced = _reduced(problem)
     positive = name in ("natural_frequency", "time_constant", "damping_ratio", "dead_time") and centre > 0
     u = float(np.sqrt(result.covariance[k, k]))
     if not np.isfinite(u) or u <= 0:

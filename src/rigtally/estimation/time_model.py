@@ -7,14 +7,14 @@ y = Σ b_k (s^k/A) u + free response + offset + drift. With X_k = (s^k/A) u and 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from rigtally.estimation.time_stamped import irregular_states, unlogged_states
 from rigtally.estimation.trial import Segment, Trial
-from rigtally.forms.hold import chains, drives, free_responses, recursion
+from rigtally.forms.hold import chains, companion, drives, flow, recursion
 from rigtally.forms.named import Form
 
 Array = NDArray[np.float64]
@@ -27,13 +27,15 @@ class Responses:
     Attributes
     ----------
     over_a : (r, n + 1, N), s^k/A u
-    over_a2 : (r, 2n + 1, N), s^k/A² u
-    free : (n, N), free responses of unit starts
+    over_a2 : (r, 2n + 1, N), s^k/A² u; (r, 0, N) where no derivative is asked for
+    free : (n, N), free responses, each of unit norm
+    free_slopes : (n, n, N), their derivatives by the coefficients a_m (second axis), outside their own span
     """
 
     over_a: Array
     over_a2: Array
     free: Array
+    free_slopes: Array
 
 
 def denominator_of(form: Form, theta: Array) -> Array:
@@ -42,31 +44,80 @@ def denominator_of(form: Form, theta: Array) -> Array:
     return np.concatenate([np.zeros(form.integrators), form.denominator(shared)[0]])
 
 
-def responses(form: Form, theta: Array, segment: Segment, trial: Trial) -> Responses:
-    """Run the two chains over the segment's inputs, exactly between its samples."""
+def natural_time(den: Array, integrators: int) -> float:
+    """Seconds of one unit of scaled time: the poles (but integrators) then multiply to one."""
+    own = abs(float(den[integrators]))
+    order = den.size - 1 - integrators
+    return own ** (-1.0 / order) if own > 0 and np.isfinite(own) else 1.0
+
+
+def responses(form: Form, theta: Array, segment: Segment, trial: Trial, slopes: bool = True) -> Responses:
+    """Run the chains over the segment's inputs, exactly between its samples.
+
+    Computed in the denominator's own time, so that its coefficients are near one: with s = s'/T,
+    s^k/A = T^(n-k) s'^k/A'.
+    """
     den = denominator_of(form, theta)
     _, _, dead = form.split(theta)
     n = den.size - 1
-    a, b = chains(den)
+    unit = natural_time(den, form.integrators)
+    den = den * unit ** (n - np.arange(n + 1.0))
+    a, b = chains(den) if slopes else (companion(den), np.eye(n)[-1])
+    scaled = replace(
+        segment,
+        interval=segment.interval / unit,
+        start=0.0,
+        stamps=None if segment.stamps is None else (segment.stamps - segment.stamps[0]) / unit,
+        at=(segment.at - float(segment.time[0])) / unit,
+        size=segment.size / unit if segment.excitation == "pulse" else segment.size,
+    )
+    dead /= unit
     if segment.excitation != "logged":
-        states, now, free = unlogged_states(a, b, segment, dead)
+        states, now = unlogged_states(a, b, scaled, dead)
     elif segment.stamps is not None:
-        states, now, free = irregular_states(a, b, segment, trial.between, dead)
+        states, now = irregular_states(a, b, scaled, trial.between, dead)
     else:
-        drive, now, phi = drives(a, b, segment.inputs, segment.interval, trial.between, dead)
-        states = np.array([recursion(phi, each, np.zeros(2 * n)) for each in drive])
-        free = free_responses(phi[:n, :n], segment.count)
+        drive, now, phi = drives(a, b, segment.inputs, scaled.interval, trial.between, dead)
+        states = np.array([recursion(phi, each, np.zeros(b.size)) for each in drive])
         if trial.output_first and trial.between == "held":
             now = np.concatenate([now[:, :1], now[:, :-1]], axis=1)
     r, count = states.shape[0], segment.count
     over_a = np.empty((r, n + 1, count))
-    over_a2 = np.empty((r, 2 * n + 1, count))
     over_a[:, :n] = states[:, :n]
     over_a[:, n] = now - np.tensordot(den[:n], states[:, :n], axes=(0, 1))
-    over_a2[:, :n] = states[:, n:]
-    for k in range(n + 1):
-        over_a2[:, n + k] = over_a[:, k] - np.tensordot(den[:n], over_a2[:, k : k + n], axes=(0, 1))
-    return Responses(over_a, over_a2, free)
+    over_a2 = np.empty((r, 2 * n + 1 if slopes else 0, count))
+    if slopes:
+        over_a2[:, :n] = states[:, n:]
+        for k in range(n + 1):
+            over_a2[:, n + k] = over_a[:, k] - np.tensordot(den[:n], over_a2[:, k : k + n], axes=(0, 1))
+    over_a *= unit ** (n - np.arange(n + 1.0))[:, None]
+    over_a2 *= unit ** (2 * n - np.arange(over_a2.shape[1], dtype=float))[:, None]
+    free, free_slopes = _free(a, n, scaled, slopes)
+    if slopes:
+        free_slopes *= unit ** (n - np.arange(n, dtype=float))[:, None]
+    return Responses(over_a, over_a2, free, free_slopes)
+
+
+def _free(a: Array, n: int, segment: Segment, slopes: bool) -> tuple[Array, Array]:
+    """Free responses f from the segment's begin (a release: from its moment on) and their derivatives.
+
+    A free response of A obeys ∂f/∂a_m = -(d/dt)^m f/A up to free responses: the second chain, driven by
+    f from a zero state.
+    """
+    time = segment.time
+    since = time - (segment.at if segment.excitation == "release" else time[0])
+    there = since >= 0.0
+    initial = np.eye(a.shape[0], n)
+    free = np.zeros((n, time.size))
+    moved = np.zeros((n, n if slopes else 0, time.size))
+    if there.any():
+        found = flow(a, initial, since[there])
+        free[:, there] = found[0]
+        if slopes:
+            moved[:, :, there] = -found[n:].transpose(1, 0, 2)
+    size = np.linalg.norm(free, axis=1)
+    size = np.where(size > 0, size, 1.0)
+    return free / size[:, None], moved / size[:, None, None]
 
 
 def outputs_and_derivatives(form: Form, theta: Array, found: Responses, count: int) -> tuple[Array, Array]:
@@ -95,8 +146,7 @@ def nuisance(trial: Trial, segment: Segment, free: Array) -> Array:
     """(c, N) columns that are solved in closed form: initial state, offset, drift."""
     columns = []
     if not trial.rest or segment.excitation == "release":
-        size = np.linalg.norm(free, axis=1, keepdims=True)
-        columns.append(free / np.where(size > 0, size, 1.0))
+        columns.append(free)
     if trial.offset == "free":
         columns.append(np.ones((1, segment.count)))
     if trial.drift:

@@ -14,13 +14,7 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
-from rigtally.estimation.time_model import (
-    denominator_of,
-    nuisance,
-    outputs_and_derivatives,
-    responses,
-    stated_offset,
-)
+from rigtally.estimation.time_model import nuisance, outputs_and_derivatives, responses, stated_offset
 from rigtally.estimation.time_noise import Noise
 from rigtally.estimation.trial import Segment, Trial
 from rigtally.forms.named import Form
@@ -85,74 +79,51 @@ class Problem:
         white = self.noise[i].whiten(cleaned, self.runs[k][i])
         return white[..., self.valid[k][i]]
 
+    def _basis(self, columns: Array, k: int, i: int) -> tuple[Array, Array]:
+        """Orthonormal basis (m, c') of the whitened nuisance columns, and (c, c') that turns weights on it
+        into coefficients of the columns; dependent columns share (least norm)."""
+        z = self._whitened(columns, k, i)
+        size = np.linalg.norm(z, axis=1)
+        size = np.where(size > 0, size, 1.0)
+        q, upper = np.linalg.qr((z / size[:, None]).T)
+        left, singular, right = np.linalg.svd(upper)
+        kept = singular > 1e-10 * max(float(singular.max()), 1e-300)
+        back = (right[kept].T / singular[kept]) / size[:, None]
+        return q @ left[:, kept], back
+
     def reduced(self, theta: Array) -> tuple[Array, Array, int]:
         """Whitened residual (m,), its Jacobian (m, p), and the number of nuisance parameters spent."""
         residuals, jacobians, spent = [], [], 0
         base = stated_offset(self.trial)
+        _, shared, _ = self.form.split(theta)
+        _, dden = self.form.denominator(shared)
+        first = self.form.numerator_count
         for k, segment in enumerate(self.segments):
             found = responses(self.form, theta, segment, self.trial)
             y, dy = outputs_and_derivatives(self.form, theta, found, segment.count)
             columns = nuisance(self.trial, segment, found.free)
-            slopes = self._free_slopes(theta, segment, found.free, columns)
+            if not (np.all(np.isfinite(y)) and np.all(np.isfinite(dy)) and np.all(np.isfinite(columns))):
+                return np.full(self.samples, np.inf), np.zeros((self.samples, theta.size)), 0
+            freely = not self.trial.rest or segment.excitation == "release"
             for i in range(self.outputs):
                 r = self._whitened(segment.outputs[i] - base - y[i], k, i)
-                jac = -self._whitened(dy[:, i], k, i)
+                moved = dy[:, i]
                 if columns.shape[0]:
-                    z = self._whitened(columns, k, i)
-                    q, upper = np.linalg.qr(z.T)
-                    size = np.abs(np.diag(upper))
-                    kept = size > 1e-10 * max(float(size.max()), 1e-300)
-                    q = q[:, kept]
+                    q, back = self._basis(columns, k, i)
                     weight = q.T @ r
-                    if slopes is not None:
-                        c = np.linalg.lstsq(z.T, r, rcond=1e-12)[0]
-                        moved = np.tensordot(c[: slopes.shape[1]], slopes, axes=(0, 1))
-                        jac = jac - self._whitened(moved, k, i)
+                    if freely:
+                        c = (back @ weight)[: self.form.degree]
+                        by_a = np.tensordot(c, found.free_slopes, axes=(0, 0))
+                        moved[first : first + shared.size] += dden[:, :-1] @ by_a[self.form.integrators :]
+                    jac = -self._whitened(moved, k, i)
                     r = r - q @ weight
                     jac = jac - (jac @ q) @ q.T
-                    spent += int(kept.sum())
+                    spent += q.shape[1]
+                else:
+                    jac = -self._whitened(moved, k, i)
                 residuals.append(r)
                 jacobians.append(jac)
         return np.concatenate(residuals), np.concatenate(jacobians, axis=1).T, spent
-
-    def _free_slopes(self, theta: Array, segment: Segment, free: Array, columns: Array) -> Array | None:
-        """(p, n, N) derivative of the free-response columns by the parameters, outside their own span.
-
-        A free response f of A obeys ∂f/∂a_m = -(1/A) (d/dt)^m f up to free responses: the second chain,
-        driven by f from a zero state.
-        """
-        from rigtally.forms.hold import held, recursion
-
-        if columns.shape[0] == 0 or (self.trial.rest and segment.excitation != "release"):
-            return None
-        den = denominator_of(self.form, theta)
-        n = den.size - 1
-        _, shared, _ = self.form.split(theta)
-        _, dden = self.form.denominator(shared)
-        time = segment.time
-        begin = segment.at if segment.excitation == "release" else float(time[0])
-        from rigtally.forms.hold import chains
-
-        a, b = chains(den)
-        uniform = segment.stamps is None and begin == time[0]
-        out = np.empty((n, n, segment.count))
-        for c in range(n):
-            initial = np.zeros(2 * n)
-            initial[c] = 1.0
-            if uniform:
-                phi, _ = held(a, b, segment.interval)
-                states = recursion(phi, np.zeros((2 * n, segment.count)), initial)
-            else:
-                states = _stepped(a, b, initial, time, begin)
-            out[c] = states[n:]
-        norm = np.linalg.norm(free, axis=1)
-        out /= np.where(norm > 0, norm, 1.0)[:, None, None]
-        slopes = np.zeros((theta.size, n, segment.count))
-        first = self.form.numerator_count
-        da = np.zeros((shared.size, n))
-        da[:, self.form.integrators :] = dden[:, :-1]
-        slopes[first : first + shared.size] = -np.einsum("sm,cmN->scN", da, out)
-        return slopes
 
     def fitted(self, theta: Array) -> tuple[tuple[Array, ...], dict[str, float]]:
         """(q, N) model outputs with their nuisance, one per segment, and the last nuisance values by name."""
@@ -165,9 +136,9 @@ class Problem:
             columns = nuisance(self.trial, segment, found.free)
             for i in range(self.outputs):
                 if columns.shape[0]:
-                    z = self._whitened(columns, k, i)
                     r = self._whitened(segment.outputs[i] - y[i], k, i)
-                    c = np.linalg.lstsq(z.T, r, rcond=1e-12)[0]
+                    q, back = self._basis(columns, k, i)
+                    c = back @ (q.T @ r)
                     y[i] += c @ columns
                     tail = columns.shape[0] - (1 if self.trial.drift else 0) - 1
                     if self.trial.offset == "free":
@@ -195,8 +166,11 @@ class Problem:
         rows, rests = [], []
         base = stated_offset(self.trial)
         for k, segment in enumerate(self.segments):
-            found = responses(form, theta, segment, self.trial)
+            with np.errstate(all="ignore"):
+                found = responses(form, theta, segment, self.trial, slopes=False)
             columns = nuisance(self.trial, segment, found.free)
+            if not (np.all(np.isfinite(found.over_a)) and np.all(np.isfinite(columns))):
+                return theta, np.inf
             for i in range(self.outputs):
                 slots = np.zeros((count, segment.count))
                 for c, (output, j, power) in enumerate(form.numerator_slots):
@@ -205,9 +179,7 @@ class Problem:
                 white = self._whitened(slots, k, i)
                 r = self._whitened(segment.outputs[i] - base, k, i)
                 if columns.shape[0]:
-                    q, upper = np.linalg.qr(self._whitened(columns, k, i).T)
-                    size = np.abs(np.diag(upper))
-                    q = q[:, size > 1e-10 * max(float(size.max()), 1e-300)]
+                    q, _ = self._basis(columns, k, i)
                     r = r - q @ (q.T @ r)
                     white = white - (white @ q) @ q.T
                 rows.append(white)
@@ -216,22 +188,4 @@ class Problem:
         size = np.linalg.norm(table, axis=1)
         size = np.where(size > 0, size, 1.0)
         b = np.linalg.lstsq((table / size[:, None]).T, r, rcond=1e-12)[0] / size
-        cost = float(np.sum((r - b @ table) ** 2))
-        return form.parameters_from(b, shared, dead), cost
-
-
-def _stepped(a: Array, b: Array, initial: Array, time: Array, begin: float) -> Array:
-    """States without input at the stamps from `begin` on; zero before it."""
-    from rigtally.forms.hold import held
-
-    known: dict[str, Array] = {}
-    states = np.zeros((initial.size, time.size))
-    state, last = initial, begin
-    for k in np.flatnonzero(time >= begin):
-        key = f"{time[k] - last:.12e}"
-        if key not in known:
-            known[key] = held(a, b, float(key))[0]
-        state = known[key] @ state
-        states[:, k] = state
-        last = float(time[k])
-    return states
+        return form.parameters_from(b, shared, dead), float(np.sum((r - b @ table) ** 2))

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from scipy.linalg import expm
 
 Array = NDArray[np.float64]
-BLOCK = 64
+BLOCK = 16  # samples in one matrix product
 
 
 def companion(denominator: Array) -> Array:
@@ -57,8 +57,11 @@ def ramped(a: Array, b: Array, duration: float) -> tuple[Array, Array, Array]:
     return e[:n, :n], e[:n, n] - e[:n, n + 1], e[:n, n + 1]
 
 
-def recursion(phi: Array, drive: Array, initial: Array, block: int = BLOCK) -> Array:
+def recursion(phi: Array, drive: Array, initial: Array) -> Array:
     """x[k+1] = Φ x[k] + drive[:, k], all k at once by blocks of matrix products.
+
+    A block of BLOCK samples is one product; the states that enter the blocks obey the same recursion
+    with Φ^BLOCK, and so on upwards.
 
     Parameters
     ----------
@@ -69,36 +72,64 @@ def recursion(phi: Array, drive: Array, initial: Array, block: int = BLOCK) -> A
     (n, N) states x[0] … x[N-1]
     """
     n, count = drive.shape
-    length = min(block, count)
-    blocks = -(-count // length)
-    padded = np.zeros((n, blocks * length))
+    if count <= BLOCK:
+        out = np.empty((n, count))
+        x = np.array(initial, dtype=float)
+        for k in range(count):
+            out[:, k] = x
+            x = phi @ x + drive[:, k]
+        return out
+    blocks = -(-count // BLOCK)
+    padded = np.zeros((n, blocks * BLOCK))
     padded[:, :count] = drive
-    powers = np.empty((length + 1, n, n))
+    powers = np.empty((BLOCK + 1, n, n))
     powers[0] = np.eye(n)
-    for k in range(length):
+    for k in range(BLOCK):
         powers[k + 1] = phi @ powers[k]
-    toeplitz = np.zeros((length, n, length, n))
-    for k in range(1, length):
+    toeplitz = np.zeros((BLOCK, n, BLOCK, n))
+    for k in range(1, BLOCK):
         toeplitz[k, :, :k, :] = powers[:k][::-1].transpose(1, 0, 2)
-    cut = padded.reshape(n, blocks, length).transpose(1, 2, 0).reshape(blocks, length * n)
-    states = (cut @ toeplitz.reshape(length * n, length * n).T).reshape(blocks, length, n)
-    last = cut @ powers[:length][::-1].transpose(0, 2, 1).reshape(length * n, n)
-    entering = np.empty((blocks, n))
-    x = np.array(initial, dtype=float)
-    for k in range(blocks):
-        entering[k] = x
-        x = powers[length] @ x + last[k]
-    states += (entering @ powers[:length].transpose(2, 0, 1).reshape(n, length * n)).reshape(
-        blocks, length, n
-    )
-    return states.reshape(blocks * length, n).T[:, :count]
+    cut = padded.reshape(n, blocks, BLOCK).transpose(1, 2, 0).reshape(blocks, BLOCK * n)
+    last = cut @ powers[:BLOCK][::-1].transpose(0, 2, 1).reshape(BLOCK * n, n)
+    entering = recursion(powers[BLOCK], last.T, initial)
+    # rows of the result come out as (state, block, sample), which is already time order
+    by_state = toeplitz.transpose(2, 3, 1, 0).reshape(BLOCK * n, n * BLOCK)
+    starts = powers[:BLOCK].transpose(2, 1, 0).reshape(n, n * BLOCK)
+    states = cut @ by_state + entering.T @ starts
+    return states.reshape(blocks, n, BLOCK).transpose(1, 0, 2).reshape(n, blocks * BLOCK)[:, :count]
 
 
-def free_responses(phi: Array, count: int) -> Array:
-    """(n, N): the first state for a unit start of each state."""
-    n = phi.shape[0]
-    nothing = np.zeros((n, count))
-    return np.array([recursion(phi, nothing, unit)[0] for unit in np.eye(n)])
+def exponentials(a: Array, durations: Array) -> Array:
+    """(N, n, n) exp(a t) for many t at once: Taylor series to order 14 after scaling, then squaring.
+
+    The scaled norm is at most 1/2, where the series' remainder is below 1e-16.
+    """
+    durations = np.asarray(durations, dtype=float)
+    size = np.linalg.norm(a, 1) * np.abs(durations)
+    squarings = np.maximum(np.ceil(np.log2(np.maximum(size, 1e-300))) + 1.0, 0.0).astype(int)
+    small = a[None] * (durations / 2.0**squarings)[:, None, None]
+    out = np.broadcast_to(np.eye(a.shape[0]), small.shape).copy()
+    for k in range(14, 0, -1):
+        out = np.eye(a.shape[0]) + small @ out / k
+    for k in range(int(squarings.max(initial=0))):
+        more = squarings > k
+        out[more] = out[more] @ out[more]
+    return out
+
+
+def flow(a: Array, initial: Array, times: Array) -> Array:
+    """(n, c, N) exp(a t) x0 for the columns x0 of `initial` (n, c) at times (N,), uniform or not."""
+    count = times.size
+    steps = np.diff(times)
+    if count > 4 * BLOCK and np.ptp(steps) <= 1e-9 * float(np.mean(steps)):
+        # exp(a t[i·L + j]) = exp(a j T) exp(a (t[0] + i L T)): two short lists of exponentials and one product
+        length = int(np.ceil(np.sqrt(count)))
+        interval = float(times[-1] - times[0]) / (count - 1)
+        coarse = exponentials(a, times[0] + interval * length * np.arange(-(-count // length))) @ initial
+        fine = exponentials(a, interval * np.arange(length))
+        out = np.tensordot(fine, coarse, axes=(2, 1))  # (length, n, blocks, c)
+        return out.transpose(1, 3, 2, 0).reshape(a.shape[0], initial.shape[1], -1)[:, :, :count]
+    return np.asarray((exponentials(a, times) @ initial).transpose(1, 2, 0))
 
 
 def delayed(samples: Array, count: int) -> Array:

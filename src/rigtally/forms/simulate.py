@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from rigtally.errors import UsageError
-from rigtally.forms.hold import companion, drives, recursion
+from rigtally.forms.hold import companion, drives, flow, recursion
 from rigtally.forms.transfer_matrix import TransferMatrix
 
 Array = NDArray[np.float64]
@@ -70,3 +70,47 @@ def simulate(
             for i in np.flatnonzero(matrix.dead_time[:, j] == dead):
                 out[i] += matrix.numerators[i, j, :n] @ x + matrix.numerators[i, j, n] * top
     return out[0] if len(matrix.outputs) == 1 else out
+
+
+def respond_at(matrix: TransferMatrix, times: ArrayLike, excitation: str = "step") -> Array:
+    """Response from rest to a unit step or a unit pulse at time 0, in closed form at any times.
+
+    Parameters
+    ----------
+    matrix : TransferMatrix
+    times : (n,) array
+        Seconds, rising or not; before the dead time the response is zero.
+    excitation : "step" or "pulse"
+        A pulse has the area 1; where an entry passes its input straight through, the pulse itself (infinite at
+        one instant) is not in the response.
+
+    Returns
+    -------
+    (n,) for one output and one input, else (outputs, inputs, n)
+
+    Raises
+    ------
+    UsageError
+        code "bad-option": another word for `excitation`.
+    """
+    if excitation not in ("step", "pulse"):
+        raise UsageError(
+            f"excitation = {excitation!r} is not known", do="use 'step' or 'pulse'", code="bad-option"
+        )
+    when = np.asarray(times, dtype=float)
+    den = matrix.denominator
+    n = den.size - 1
+    block = np.zeros((n + 1, n + 1))
+    block[:n, :n] = companion(den)
+    block[n - 1, n] = 1.0
+    begin = np.zeros((n + 1, 1))
+    begin[n if excitation == "step" else n - 1] = 1.0
+    out = np.zeros((len(matrix.outputs), len(matrix.inputs), when.size))
+    for i, j in np.ndindex(out.shape[:2]):
+        since = when - matrix.dead_time[i, j]
+        acting = since >= 0
+        if acting.any():
+            x = flow(block, begin, since[acting])[:, 0]
+            top = x[n] - den[:-1] @ x[:n]
+            out[i, j, acting] = matrix.numerators[i, j, :n] @ x[:n] + matrix.numerators[i, j, n] * top
+    return out[0, 0] if out.shape[:2] == (1, 1) else out
