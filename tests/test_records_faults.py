@@ -221,3 +221,15 @@ def test_looking_twice_changes_nothing() -> None:
     samples[100] = 30.0
     once = find_faults(Record((Channel("p", np.minimum(samples, 1.5)),), 0.0, INTERVAL))
     assert find_faults(once).channels[0].faults == once.channels[0].faults
+
+
+def test_texts_are_in_the_unit_that_the_log_wrote() -> None:
+    """A channel in °C is clipped at a temperature in °C, and its hum is in kelvins of the same size."""
+    rng = np.random.default_rng(27)
+    celsius = np.minimum(20 + rng.standard_normal(3000), 21.5)
+    channel = examined(celsius + 273.15, written_unit="degC", offset=273.15)
+    (fault,) = [fault for fault in channel.faults if fault.kind == "clipped"]
+    assert "21.5 degC" in fault.text
+    assert fault.size == pytest.approx(294.65)
+    kilo = examined(np.minimum(1000 * rng.standard_normal(3000), 1500.0), written_unit="kPa", factor=1000.0)
+    assert "1.5 kPa" in kilo.faults[0].text

@@ -76,9 +76,7 @@ def _examined(channel: Channel, record: Record) -> Channel:
         channel = replace(channel, resolution=float(f"{step:.10g}"))
     low, high = float(np.nanmin(samples)), float(np.nanmax(samples))
     if low == high:
-        faults.append(
-            Fault("constant", f"never changes: {_with_unit(low, channel)}", int(known.sum()), size=low)
-        )
+        faults.append(Fault("constant", f"never changes: {_value(low, channel)}", int(known.sum()), size=low))
         return replace(channel, faults=tuple(faults))
     sigma = noise_sigma(samples)
     visible = _visible(channel, sigma)
@@ -88,7 +86,7 @@ def _examined(channel: Channel, record: Record) -> Channel:
     faults += _find_spikes(channel)
     faults += _find_coarse_steps(channel, sigma, high - low)
     if record.uniform:
-        faults += find_hum(samples, record.interval, channel.unit, FALSE_ALARM)
+        faults += find_hum(channel, record.interval, FALSE_ALARM)
         faults += find_folding(samples, channel.resolution, FALSE_ALARM)
     return replace(channel, faults=tuple(faults))
 
@@ -108,8 +106,15 @@ def _samples(count: int) -> str:
     return f"{count} sample{'' if count == 1 else 's'}"
 
 
-def _with_unit(number: float, channel: Channel) -> str:
-    return f"{number:.4g} {channel.unit}".rstrip()
+def _value(number: float, channel: Channel) -> str:
+    """A value in the unit that the log wrote."""
+    written = (number - channel.offset) / channel.factor
+    return f"{written:.4g} {channel.written_unit or channel.unit}".rstrip()
+
+
+def _difference(number: float, channel: Channel) -> str:
+    """A difference of values in the unit that the log wrote."""
+    return f"{number / abs(channel.factor):.4g} {channel.written_unit or channel.unit}".rstrip()
 
 
 def _first(rows: NDArray[np.intp]) -> tuple[int, ...]:
@@ -159,7 +164,7 @@ def _find_clipping(
                 Fault(
                     "clipped",
                     f"{_samples(count)} ({share:.2g}) at the {word} end of the range, "
-                    f"{_with_unit(edge, channel)}: the true values lie beyond it",
+                    f"{_value(edge, channel)}: the true values lie beyond it",
                     count,
                     _first(np.flatnonzero(mask)),
                     edge,
@@ -200,7 +205,7 @@ def _find_stuck(channel: Channel, sigma: float) -> list[Fault]:
         return []
     count = int(lengths[long].sum())
     longest = int(np.argmax(np.where(long, lengths, 0)))
-    value = _with_unit(float(samples[starts[longest]]), channel)
+    value = _value(float(samples[starts[longest]]), channel)
     text = (
         f"{count} samples in {int(long.sum())} stretch(es) hold one value while the rest is noisy; the "
         f"longest, {int(lengths[longest])} samples at {value}, from sample {int(starts[longest])}"
@@ -245,7 +250,7 @@ def _find_spikes(channel: Channel) -> list[Fault]:
     largest = float(np.max(np.abs(bend[spikes - 1])))
     text = (
         f"{_samples(spikes.size)} far off both neighbours, by up to "
-        f"{_with_unit(largest, channel)} ({largest / scale * math.sqrt(1.5):.3g} times the noise)"
+        f"{_difference(largest, channel)} ({largest / scale * math.sqrt(1.5):.3g} times the noise)"
     )
     return [Fault("spikes", text, int(spikes.size), _first(spikes), largest)]
 
@@ -263,7 +268,7 @@ def _find_coarse_steps(channel: Channel, sigma: float, extent: float) -> list[Fa
         return []
     against = f"{step / noise:.2g} times the noise" if noise > 0.1 * step else "hiding the noise"
     text = (
-        f"the resolution of {_with_unit(step, channel)} is {step / extent:.2g} of the range and coarse, "
+        f"the resolution of {_difference(step, channel)} is {step / extent:.2g} of the range and coarse, "
         f"{against}"
     )
     return [Fault("coarse-steps", text, size=step / noise if noise > 0.1 * step else float("nan"))]

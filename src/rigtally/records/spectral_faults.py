@@ -7,7 +7,7 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
-from rigtally.records.record import Fault
+from rigtally.records.record import Channel, Fault
 
 Array = NDArray[np.float64]
 
@@ -18,20 +18,21 @@ LONGEST = 1 << 21
 SEGMENT = 1024
 
 
-def find_hum(samples: Array, interval: float, unit: str, false_alarm: float) -> list[Fault]:
+def find_hum(channel: Channel, interval: float, false_alarm: float) -> list[Fault]:
     """A line at 50 Hz or 60 Hz that stands out of its neighbourhood.
 
     Periodogram with a Hann window. Noise gives each bin an exponential distribution about the local mean, so
     the largest of m bins passes x times the mean with the chance m·exp(−x). A line that makes up the channel,
     or has a peer within a fifth of its frequency, is taken as excitation and not reported.
     """
-    x = _whole(samples[:LONGEST])
+    x = _whole(channel.samples[:LONGEST])
     count = x.size
     if count < 64:
         return []
     window = np.hanning(count)
     power = np.abs(np.fft.rfft((x - x.mean()) * window)) ** 2
     spacing = 1.0 / (count * interval)
+    unit = channel.written_unit or channel.unit
     found = []
     for mains in MAINS:
         # twelve bins of neighbourhood on each side, all below half the sampling rate
@@ -61,7 +62,8 @@ def find_hum(samples: Array, interval: float, unit: str, false_alarm: float) -> 
         found.append(
             Fault(
                 "mains-hum",
-                f"a line of {amplitude:.3g} {unit}".rstrip() + f" amplitude at {frequency:.4g} Hz (mains)",
+                f"a line of {amplitude / abs(channel.factor):.3g} {unit}".rstrip()
+                + f" amplitude at {frequency:.4g} Hz (mains)",
                 size=amplitude,
             )
         )
