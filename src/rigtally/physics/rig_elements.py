@@ -252,6 +252,12 @@ class Parts:
                 found[prop] = self._stated_property(name, prop, stated[prop])
             else:
                 self._computed_property(name, prop, stated, entry, at)
+        # what no element computes with may still bound its validity (the speed of sound in a line)
+        entry["stated"] = {
+            prop: self.source.quantity(stated[prop], PROPERTY_UNITS[prop], table=f"medium.{name}", key=prop)
+            for prop in ("density", "viscosity", "bulk_modulus")
+            if prop in stated and not self._is_shared(stated[prop])
+        }
         return found
 
     def _stated_property(self, name: str, prop: str, written: Any) -> str:

@@ -175,6 +175,9 @@ class RigValues:
                 code="missing-value",
             )
         current = {name: value_of(self._named(named, name)) for name in self.rig.values}
+        stated = self.rig.media[medium].get("stated", {}) if medium in self.rig.media else {}
+        if prop in stated:
+            return stated[prop].value
         if any(np.size(x) > 1 for x in current.values()):
             return self._drawn_property(medium, prop, current)
         value, slopes = property_value(self.rig, medium, prop, {n: float(x) for n, x in current.items()})
