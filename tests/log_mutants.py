@@ -74,10 +74,13 @@ class _Sheet:
         self.whole[row, max(cell - (len(self.rows[row]) - 4), 0)] = False
 
     def damage(self, way: str, bit: str, rng: np.random.Generator) -> str:
-        # the first stamp is the origin of dates: it stays
-        row = int(rng.integers(1, ROWS))
+        # the first and the last rows stand beside what is no row; the first stamp is the origin of dates
+        edge = rng.random() < 0.2
+        row = int(rng.choice([0, 1, ROWS - 2, ROWS - 1])) if edge else int(rng.integers(1, ROWS))
+        if row == 0 and way in ("lose", "join"):
+            row = 1
         line = self.rows[row]
-        cell = int(rng.integers(len(line)))
+        cell = int(rng.integers(len(line) - 3 if row == 0 else 0, len(line)))
         before = line[cell]
         at = int(rng.integers(len(before) + 1))
         if way in ("edit", "insert", "drop"):

@@ -92,12 +92,10 @@ def _rows_above(lines: Lines, layout: Layout, wishes: Wishes) -> list[tuple[int,
     found: list[tuple[int, list[str]]] = []
     row = layout.first - 1
     while row >= 0 and len(found) < 3:
-        if not lines.blank(row):
-            words = _words(lines[row], layout)
-            if words is None:
-                break
+        words = None if lines.blank(row) else _words(lines[row], layout)
+        if words is not None:
             found.append((row, words))
-        elif found:
+        elif found or not (lines.blank(row) or lines.comment(row)):
             break
         row -= 1
     if not found and row >= 0:

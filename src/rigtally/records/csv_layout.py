@@ -215,7 +215,7 @@ def _first_row(lines: Lines, kinds: dict[int, list[str]], columns: Sequence[str]
         if lines.comment(row):
             continue
         each = kinds[row]
-        damaged = _like_data(each) and max(2, len(columns) - 1) <= len(each) <= len(columns) + 2
+        damaged = _like_data(each) and 2 <= len(each) <= len(columns) + 2
         if not damaged or each[0] == "words":
             break
         first = row
