@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -255,3 +256,32 @@ def test_exact_values_are_said_to_be_exact() -> None:
     found = predict(b.drive("u", "voltage", "in").reading("y", "voltage", "a").rig())
     text = next(w.text for w in found.warnings if w.code == "taken-as-exact")
     assert "r.resistance" in text and "c.capacitance" not in text
+
+
+def with_form(build: RigBuilder, name: str):
+    """The prediction where [fit] states a form."""
+    return predict(replace(build.rig(), fit={"form": name}))
+
+
+def test_a_stated_form_that_holds_the_network_is_used() -> None:
+    """rational-0/2 has the coefficients and second-order-zero a zero time of 0; the physics is the same."""
+    own = predict(series_circuit().rig())
+    rational, zero = (
+        with_form(series_circuit(), "rational-1/2"),
+        with_form(series_circuit(), "second-order-zero"),
+    )
+    w, z = (own.parameters[n].value for n in ("natural_frequency", "damping_ratio"))
+    assert rational.names == ("b0", "b1", "a0", "a1")
+    values = [rational.parameters[n].value for n in rational.names]
+    np.testing.assert_allclose(values, [w * w, 0.0, w * w, 2 * z * w], rtol=1e-12)
+    assert rational.derived["gain"].value == pytest.approx(1.0) and rational.derived["gain"].u < 1e-12
+    assert rational.parameters["a0"].u == pytest.approx(2 * w * own.parameters["natural_frequency"].u)
+    assert zero.parameters["zero_time"].value == 0.0
+    assert zero.parameters["natural_frequency"].u == pytest.approx(own.parameters["natural_frequency"].u)
+
+
+def test_a_stated_form_that_cannot_hold_the_network_is_said() -> None:
+    """A second order asked to be a first: predicted as what it is, with a warning."""
+    found = with_form(series_circuit(), "first-order")
+    assert found.form.name == "second-order"
+    assert "form-differs" in [w.code for w in found.warnings]

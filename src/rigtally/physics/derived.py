@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigtally.physics.line_model import LineModel, Solved
+from rigtally.quantities import units
 from rigtally.quantities.uncertain import Uncertain
 
 Array = NDArray[np.float64]
@@ -40,6 +41,14 @@ def derived_quantities(model: LineModel, solved: Solved, u: Array) -> dict[str, 
             if model.form.family == "second-order" and z > 0:
                 over = math.exp(-math.pi * z / q)
                 put("overshoot", over, -math.pi / q**3 * over * dz, "")
+    form = model.form
+    if form.family == "rational" and form.single and form.numerator_count:
+        # b_p/a_0, the gain of the lowest free power
+        p, low = form.powers[0][0][0], form.integrators
+        b, a = solved.numerators[0, 0, p], solved.denominator[low]
+        db, da = solved.by_numerators[:, 0, 0, p], solved.by_denominator[:, low]
+        unit = units.ratio(model.network.output_units[0], model.network.input_units[0], p - low)
+        put("gain", b / a, db / a - b * da / a**2, unit)
     pairs, real = split_poles(solved.poles)
     several = len(pairs) > 1 or (len(pairs) == 1 and len(real) > 1)
     if several or "natural_frequency" not in names:

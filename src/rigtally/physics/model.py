@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigtally.errors import RigError
-from rigtally.forms.named import Form, matrix_form
+from rigtally.forms.named import Form, form, matrix_form
 from rigtally.physics.expansion import expand
 from rigtally.physics.line_frequency import leading_frequency, leading_pole
 from rigtally.physics.line_model import LineModel, Solved
@@ -23,6 +23,7 @@ from rigtally.physics.rig import Rig
 from rigtally.physics.transfer import Transfer
 
 Array = NDArray[np.float64]
+FROM_RIG = "from-rig"
 
 
 class Model(LineModel):
@@ -42,13 +43,26 @@ class Model(LineModel):
     def _form(self) -> Form:
         powers = self.reduction.powers
         self.refuse_unmoved(powers)
-        return matrix_form(
+        own = matrix_form(
             [r.name for r in self.rig.readings],
             [d.name for d in self.rig.drives],
             powers,
             self.reduction.degree - self.reduction.integrators,
             integrators=self.reduction.integrators,
         )
+        return self._stated_form(own)
+
+    def _stated_form(self, own: Form) -> Form:
+        """The form that [fit] states, where it holds the network's powers of s; else the network's own."""
+        name = str(self.rig.fit.get("form") or FROM_RIG)
+        if name in (FROM_RIG, "any", own.name) or not own.single:
+            return own
+        stated = form(name, output=own.outputs[0], inputs=own.inputs[0])
+        mine, theirs = own.powers[0][0], stated.powers[0][0]
+        same_low = stated.family == "rational" or mine[0] == theirs[0]
+        if own.integrators or stated.order != own.order or not set(mine) <= set(theirs) or not same_low:
+            return own
+        return stated
 
     def coefficients(self, values: Array, omega: float | None = None) -> tuple[Array, Array]:
         """Monic denominator (n + 1,) and numerators (q, r, n + 1) at (v,) values."""

@@ -16,7 +16,7 @@ from rigtally.physics.expansion import TooLarge
 from rigtally.physics.large_model import POLYNOMIAL_ORDER, LargeModel
 from rigtally.physics.limits import line_limits
 from rigtally.physics.line_model import LineModel, Solved
-from rigtally.physics.model import Model
+from rigtally.physics.model import FROM_RIG, Model
 from rigtally.physics.network import assemble
 from rigtally.physics.pencil import System
 from rigtally.physics.prediction_result import Finding, Prediction
@@ -152,7 +152,25 @@ def _budget(model: LineModel, sensitivity: Array, u: Array) -> dict[str, list[tu
 
 def _warnings(model: LineModel, solved: Solved) -> list[Finding]:
     out: list[Finding] = []
+    stated = str(model.rig.fit.get("form") or FROM_RIG)
+    if stated not in (FROM_RIG, "any", model.form.name):
+        out.append(
+            Finding(
+                "form-differs",
+                f"the rig file asks for the form {stated}, the elements imply {model.form.name} with "
+                f"{', '.join(model.form.names)}: the prediction is in the latter",
+            )
+        )
     exact = [n for n, x in zip(model.values.input_names, model.values.inputs, strict=True) if x.u == 0.0]
+    stated = str(model.rig.fit.get("form") or FROM_RIG)
+    if stated not in (FROM_RIG, "any", model.form.name):
+        out.append(
+            Finding(
+                "form-differs",
+                f"the rig file asks for the form {stated}, the elements imply {model.form.name} with "
+                f"{', '.join(model.form.names)}: the prediction is in the latter",
+            )
+        )
     exact = [n for n in exact if n != "rig.gravity"]
     if exact:
         out.append(
