@@ -8,6 +8,7 @@ from scipy.interpolate import CubicSpline
 
 from rigtally.errors import LogError
 from rigtally.records.join import fit_clocks, join_records
+from rigtally.records.join_events import fit_clocks_by_events, join_by_events
 from rigtally.records.record import Channel, Provenance, Record
 
 
@@ -84,6 +85,47 @@ def test_missing_samples_are_not_bridged() -> None:
     joined = join_records(first, holed, "p")
     inside = (joined.time > 3000 * 1.7e-3 + 0.01) & (joined.time < 3099 * 1.7e-3 - 0.01)
     assert np.isnan(joined.channel("q").samples[inside]).all()
+
+
+def switched(t: np.ndarray, scale: float, rng: np.random.Generator) -> np.ndarray:
+    on = ((t > 3.0) & (t < 6.5)) | ((t > 8.0) & (t < 13.0))
+    return scale * (on + 0.01 * rng.standard_normal(t.size))
+
+
+def test_loggers_without_a_shared_channel_are_joined_by_events() -> None:
+    """Four switchings that both saw: offset and rate within 1.96 u in at least 88 % of 25 pairs."""
+    rng = np.random.default_rng(54)
+    inside = 0
+    for _ in range(25):
+        offset, rate = rng.uniform(-1, 1), 1e-4 * rng.standard_normal()
+        t1, t2 = np.arange(15000) * 1e-3, np.arange(9000) * 1.7e-3
+        first = Record((Channel("valve", switched(t1, 24.0, rng)),), 0.0, 1e-3)
+        second = Record((Channel("p", switched(offset + (1 + rate) * t2, 5.0, rng)),), 0.0, 1.7e-3)
+        fit = fit_clocks_by_events(first, second, "valve", "p")
+        off = fit.offset.value + fit.rate.value * 7.5 - offset - rate * 7.5
+        inside += abs(off) < 1.96 * fit.alignment.u and abs(fit.rate.value - rate) < 1.96 * fit.rate.u
+        assert fit.alignment.u < 1e-3
+    assert inside >= 22
+    assert join_by_events(first, second, "valve", "p").names == ("valve", "p")
+
+
+def test_other_events_are_refused() -> None:
+    """One switching more in one of the logs: which is which is not guessed."""
+    rng = np.random.default_rng(55)
+    t = np.arange(15000) * 1e-3
+    first = Record((Channel("u", switched(t, 1.0, rng)),), 0.0, 1e-3)
+    second = Record((Channel("u", (t > 4) + 0.01 * rng.standard_normal(t.size)),), 0.0, 1e-3)
+    with pytest.raises(LogError) as caught:
+        join_by_events(first, second, "u", "u")
+    assert caught.value.code == "not-shared"
+
+
+def test_a_joined_step_gets_no_overshoot() -> None:
+    """Interpolation between the other logger's samples stays between them."""
+    first, second, _ = pair("noise", 0.01, np.random.default_rng(56), 0.0, 0.0)
+    step = Channel("q", (second.time > 7.0) * 1.0)
+    joined = join_records(first, Record((second.channels[0], step), 0.0, 1.7e-3), "p").channel("q").samples
+    assert np.nanmin(joined) == 0.0 and np.nanmax(joined) == 1.0
 
 
 def test_readings_that_do_not_agree_are_refused() -> None:

@@ -55,11 +55,8 @@ class ClockFit:
 
 
 def join_records(first: Record, second: Record, shared: str, shared_second: str | None = None) -> Record:
-    """The first record with the second's channels, read at the first's instants.
-
-    A channel of the second is interpolated (cubic) to the first clock, which its fault "joined" says, with
-    the offset and the rate; `u_skew` is the u of the alignment. Outside the second's time it is NaN.
-    Channels of the second whose name is taken, the shared one among them, get the suffix "_2".
+    """The first record with the second's channels, by a channel that both recorded (see `fit_clocks`,
+    `joined`).
 
     Parameters
     ----------
@@ -72,8 +69,17 @@ def join_records(first: Record, second: Record, shared: str, shared_second: str 
     LogError
         codes "no-such-channel", "not-shared" (the two readings do not agree).
     """
-    name = shared_second or shared
-    fit = fit_clocks(first, second, shared, name)
+    fit = fit_clocks(first, second, shared, shared_second or shared)
+    return joined(first, second, fit, f"channel {shared!r}")
+
+
+def joined(first: Record, second: Record, fit: ClockFit, by: str) -> Record:
+    """The first record with the second's channels, read at the first's instants.
+
+    A channel of the second is interpolated (monotone cubic, which adds no overshoot to a step) to the first
+    clock, which its fault "joined" says, with the offset and the rate; `u_skew` is the u of the alignment.
+    Outside the second's time it is NaN. Channels of the second whose name is taken get the suffix "_2".
+    """
     taken = set(first.names)
     gain = 1.0 + fit.rate.value
     at = (first.time - fit.offset.value) / gain
@@ -82,14 +88,14 @@ def join_records(first: Record, second: Record, shared: str, shared_second: str 
         f"read by another logger, whose clock is {behind.value:.6g} ± {behind.expanded():.1g} s behind and "
         f"runs {1e6 * off.value:.3g} ± {1e6 * off.expanded():.1g} ppm off; interpolated to this clock"
     )
-    joined = []
+    added = []
     for channel in second.channels:
         label = channel.name
         while label in taken:
             label += "_2"
         taken.add(label)
         fault = Fault("joined", text, size=fit.alignment.u)
-        joined.append(
+        added.append(
             replace(
                 channel,
                 name=label,
@@ -101,11 +107,11 @@ def join_records(first: Record, second: Record, shared: str, shared_second: str 
         )
     how = (
         *first.provenance.how_read,
-        f"joined with {second.provenance.file or 'a second log'} by {shared!r}",
+        f"joined with {second.provenance.file or 'a second log'} by {by}",
     )
     return replace(
         first,
-        channels=(*first.channels, *joined),
+        channels=(*first.channels, *added),
         provenance=replace(first.provenance, how_read=how),
     )
 
@@ -232,15 +238,15 @@ def _refine(one: _Reading, two: _Reading, offset: float, rate: float) -> ClockFi
 
 
 def _interpolated(time: Array, samples: Array, at: Array) -> Array:
-    """Cubic through the known samples; NaN outside them and across missing ones."""
-    from scipy.interpolate import CubicSpline
+    """Monotone cubic through the known samples; NaN outside them and across missing ones."""
+    from scipy.interpolate import PchipInterpolator
 
     known = np.isfinite(samples)
     out = np.full(at.size, np.nan)
     if known.sum() < 4:
         return out
     inside = (at >= time[known][0]) & (at <= time[known][-1])
-    out[inside] = CubicSpline(time[known], samples[known])(at[inside])
+    out[inside] = PchipInterpolator(time[known], samples[known])(at[inside])
     if not known.all():
         right = np.clip(np.searchsorted(time, at), 1, time.size - 1)
         out[~(known[right] & known[right - 1])] = np.nan
