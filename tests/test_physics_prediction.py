@@ -137,6 +137,26 @@ def test_evaluate_at_the_nominal_values_is_the_prediction() -> None:
         assert not np.all(np.isfinite(found.evaluate(broken)))
 
 
+def test_draws_and_derivatives_elsewhere_are_those_of_the_rig() -> None:
+    """evaluate_many is evaluate row by row; differentiate at another point is the derivative there."""
+    build = impulse_line()
+    build.values["gauge chamber.compliance"] = Uncertain(3.1e-12, 1e-12)
+    found = predict(build.rig())
+    nominal = np.array([x.value for x in found.inputs])
+    rng = np.random.default_rng(8)
+    rows = nominal * rng.uniform(0.8, 1.2, (20, nominal.size))
+    assert found.evaluate_many is not None and found.differentiate is not None
+    np.testing.assert_allclose(found.evaluate_many(rows), [found.evaluate(r) for r in rows], rtol=1e-10)
+    x = rows[3]
+    slope = found.differentiate(x)
+    for k in range(x.size):
+        step = np.where(np.arange(x.size) == k, 1e-5 * x, 0.0)
+        by_difference = (found.evaluate(x + step) - found.evaluate(x - step)) / (2e-5 * x[k])
+        np.testing.assert_allclose(slope[:, k], by_difference, rtol=1e-5, atol=1e-7 * abs(slope[:, k]).max())
+    kinds = dict(zip(found.input_names, (d.distribution for d in found.drawn), strict=True))
+    assert kinds["gauge chamber.compliance"] == "lognormal" and kinds["impulse line.bore"] == "rectangular"
+
+
 def test_budget_shares_and_covariance() -> None:
     """√(1/(L C)): shares by ¼u²; they sum to 1; covariance and u agree; an exact gain has no budget."""
     found = predict(series_circuit().rig())

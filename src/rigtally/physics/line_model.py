@@ -79,6 +79,14 @@ class LineModel(ABC):
     def solve(self, values: Array | None = None) -> Solved:
         """Everything at (v,) values (the nominal ones unless stated), with exact derivatives."""
 
+    def differentiate(self, values: Array) -> Array:
+        """(v,) values -> (p, v) exact derivative there; NaN where the values make no such rig."""
+        try:
+            with np.errstate(all="ignore"):
+                return self.solve(np.asarray(values, dtype=float)).sensitivity
+        except (RigError, ArithmeticError, ValueError, np.linalg.LinAlgError):
+            return np.full((len(self.form.names), len(self.values.input_names)), np.nan)
+
     def solve_omega(self, values: Array, start: float | None) -> Any:
         """The lines' frequency at (v,) or (m, v) values: a float or (m,); NaN where there is no such line."""
         single = values.ndim == 1
