@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 from scipy import signal
@@ -80,7 +82,7 @@ def test_dead_time_inside_an_interval(between: str, dead: float) -> None:
     corners = corners[corners <= time[-1] + 1e-12]
     state = np.zeros(2)
     expected = {0: 0.0}
-    for left, right in zip(corners[:-1], corners[1:], strict=True):
+    for left, right in pairwise(corners):
         middle = input_at(0.5 * (left + right))
         ends = (middle, middle) if between == "held" else (input_at(left), input_at(right))
 

@@ -158,6 +158,7 @@ class Problem:
                 out[i].extend(rest[run] for run in self.runs[k][i])
         return out
 
+    @np.errstate(all="ignore")  # a candidate that overflows is answered with an infinite cost
     def best_numerator(self, shared: Array, dead: float) -> tuple[Array, float]:
         """Parameters with the best numerator for a given denominator, and their cost."""
         form = self.form
@@ -166,8 +167,7 @@ class Problem:
         rows, rests = [], []
         base = stated_offset(self.trial)
         for k, segment in enumerate(self.segments):
-            with np.errstate(all="ignore"):
-                found = responses(form, theta, segment, self.trial, slopes=False)
+            found = responses(form, theta, segment, self.trial, slopes=False)
             columns = nuisance(self.trial, segment, found.free)
             if not (np.all(np.isfinite(found.over_a)) and np.all(np.isfinite(columns))):
                 return theta, np.inf
