@@ -100,9 +100,6 @@ def predict(rig: Rig, *, monte_carlo: int = 0, seed: int = 0, progress: Progress
         warnings=tuple(warnings),
         removed_poles=model.reduction.removed,
         provenance=provenance,
-        evaluate_many=model.evaluate_many,
-        differentiate=lambda values: model.solve(values).sensitivity,
-        drawn=drawn_inputs(model)[0],
     )
 
 
