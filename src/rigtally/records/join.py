@@ -135,9 +135,15 @@ def fit_clocks(first: Record, second: Record, shared: str, shared_second: str) -
     offset, _, (smooth_one, smooth_two) = max(tries, key=lambda found: abs(found[1]))
     rate = 0.0
     fit = None
+    centre = 0.5 * float(two.time[0] + two.time[-1])
     for _ in range(12):
         fit = _refine(smooth_one, smooth_two, offset, rate)
+        still = (
+            abs(fit.offset.value + fit.rate.value * centre - offset - rate * centre) < 1e-3 * fit.alignment.u
+        )
         offset, rate = fit.offset.value, fit.rate.value
+        if still:
+            break
     if fit is None or not fit.offset.determined or fit.correlation < LEAST_CORRELATION:
         raise LogError(
             f"the two logs do not agree on {shared!r}",
