@@ -10,6 +10,7 @@ import pytest
 from scipy.signal import lsim
 
 from rigtally.errors import LogError
+from rigtally.records.clock import make_record
 from rigtally.records.events import find_events
 from rigtally.records.inspection import inspect
 from rigtally.records.linearity import Linearity, compare_amplitudes
@@ -157,3 +158,49 @@ def test_hysteresis_is_stated_with_its_width() -> None:
     assert one.hysteresis.value == pytest.approx(-0.06, abs=0.004)
     assert abs(one.hysteresis.value) > 5 * one.hysteresis.u
     assert any("dead band" in text for text in one.findings)
+
+
+def odd_samples(rng: np.random.Generator, count: int) -> np.ndarray:
+    """Records that no bench should make, and some that it does."""
+    t = np.arange(count)
+    kinds = (
+        rng.standard_normal(count),
+        np.zeros(count),
+        (t > count * rng.random()) * 1.0,
+        np.full(count, np.nan),
+        np.sin(3 * t * rng.random()),
+        np.cumsum(rng.standard_normal(count)),
+        np.round(rng.standard_normal(count)),
+        (t % rng.integers(2, 30) < 3) * 1.0,
+        np.exp(-t / (1 + count / 5)) * np.cos(0.2 * t),
+        rng.standard_cauchy(count),
+        (t == count // 2) * 1.0,
+        np.where(rng.random(count) < 0.5, np.nan, rng.standard_normal(count)),
+    )
+    scale, offset = 10.0 ** rng.choice([-80, -3, 0, 3, 70]), rng.choice([0.0, 1.0, 1e9])
+    return np.asarray(kinds[rng.integers(len(kinds))] * scale + offset)
+
+
+def test_anything_is_inspected_or_refused() -> None:
+    """300 odd records on odd clocks: an inspection that can be written, or a refusal; no warning, no
+    traceback."""
+    rng = np.random.default_rng(64)
+    looked = 0
+    for _ in range(300):
+        count = int(rng.choice([0, 1, 2, 3, 9, 17, 40, 120, 700]))
+        channels = [Channel(f"c{k}", odd_samples(rng, count)) for k in range(rng.integers(1, 4))]
+        stamps = (
+            None,
+            0.1 * np.arange(count),
+            np.cumsum(rng.random(count)),
+            np.round(0.0013 * np.arange(count), 3),
+            np.sort(rng.integers(0, max(count, 1), count)).astype(float),
+        )[rng.integers(5)]
+        try:
+            record = make_record(channels, stamps, 10.0 if stamps is None else None, Provenance("f"))
+        except LogError as refusal:
+            assert refusal.code in {"too-short", "clock-stands"}
+            continue
+        json.dumps(plain(inspect(record).to_dict()), allow_nan=False)
+        looked += 1
+    assert looked > 180
