@@ -119,7 +119,14 @@ def columns(
             else:
                 make = _sampled_input
             driven, ddriven = make(
-                problem, segment, bins, den, dden, found, (whole, fraction, interval), (z, delta, inverse, slope)
+                problem,
+                segment,
+                bins,
+                den,
+                dden,
+                found,
+                (whole, fraction, interval),
+                (z, delta, inverse, slope),
             )
             ddriven = ddriven[:kept]
     return Columns(driven, ddriven, ends, dends, _fixed(problem, segment, bins, z))

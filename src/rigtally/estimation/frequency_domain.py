@@ -144,9 +144,7 @@ def _used_bins(problem: Problem, shared: Array) -> tuple[Bins, ...]:
             out.append(bins)
             continue
         highest = int(10.0 * fastest * segment.count * segment.interval / (2.0 * np.pi))
-        out.append(
-            all_bins(segment.count, with_zero=bool(bins.index[0] == 0), highest=max(highest, 1500))
-        )
+        out.append(all_bins(segment.count, with_zero=bool(bins.index[0] == 0), highest=max(highest, 1500)))
     return tuple(out)
 
 
@@ -223,7 +221,9 @@ def _output_rms(found: Found) -> Array:
     return np.maximum(out, 1e-12 * np.max(out))
 
 
-def series(problem: Problem, theta: Array, linear: tuple[Array, ...]) -> tuple[tuple[Array, ...], list[Array]]:
+def series(
+    problem: Problem, theta: Array, linear: tuple[Array, ...]
+) -> tuple[tuple[Array, ...], list[Array]]:
     """The model's output in time, (q, n) per segment, and the residual, (q, n) per segment."""
     form = problem.form
     full = replace(
@@ -296,9 +296,7 @@ def _hum(problem: Problem, residuals: list[Array]) -> tuple[float, ...]:
 
 
 def _alike(one: Colour, other: Colour) -> bool:
-    return one.order == other.order and bool(
-        np.all(np.abs(one.predictors[-1] - other.predictors[-1]) < 2e-3)
-    )
+    return one.order == other.order and bool(np.all(np.abs(one.predictors[-1] - other.predictors[-1]) < 2e-3))
 
 
 def _whitened(problem: Problem, colours: list[Colour]) -> dict[str, object]:

@@ -102,9 +102,7 @@ def one_interval(den: Array, dden: Array, interval: float, fraction: float, hold
     elif hold == "ramped":
         # the line through u₋ and u₀ up to f·T, then the line through u₀ and u₊
         early = np.array([fraction * g1[1] - g2[1] / t, (1.0 - fraction) * g1[1] + g2[1] / t])
-        dearly = np.stack(
-            [fraction * dg1[1] - dg2[1] / t, (1.0 - fraction) * dg1[1] + dg2[1] / t], axis=1
-        )
+        dearly = np.stack([fraction * dg1[1] - dg2[1] / t, (1.0 - fraction) * dg1[1] + dg2[1] / t], axis=1)
         moved = np.outer([fraction, 1.0 - fraction], e[1] @ b)
         taps[:2] = early @ e[2].T
         dtaps[:k, :2] = dearly @ e[2].T + np.einsum("kij,aj->kai", de[2], early)

@@ -153,7 +153,9 @@ def constrained(problem: Problem, theta: Array, trial: Trial) -> Constrained:
     free = [name for name in names if parameters[name].vary and not parameters[name].expr]
     if free:
         mini = lmfit.Minimizer(residual, parameters)
-        found = mini.minimize(method="leastsq", Dfun=derivative, col_deriv=0, ftol=1e-13, xtol=1e-10, max_nfev=400)
+        found = mini.minimize(
+            method="leastsq", Dfun=derivative, col_deriv=0, ftol=1e-13, xtol=1e-10, max_nfev=400
+        )
         parameters = found.params
         evaluations, converged = int(found.nfev), bool(found.success)
     else:

@@ -96,7 +96,8 @@ def scout(problem: Problem, *, wide: bool) -> list[Descent]:
 
 def _same(one: Candidate, other: Candidate) -> bool:
     return bool(
-        np.allclose(one.shared, other.shared, rtol=0.05) and np.isclose(one.dead_time, other.dead_time, rtol=0.05)
+        np.allclose(one.shared, other.shared, rtol=0.05)
+        and np.isclose(one.dead_time, other.dead_time, rtol=0.05)
     )
 
 

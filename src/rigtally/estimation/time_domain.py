@@ -67,13 +67,11 @@ def _first(problem: Problem, carrier: Carrier, start: Array | None) -> Found:
     trial = problem.trial
     if start is not None:
         return carrier.minimise(_reduced(problem), start, evaluations=200)
-    ends = []
+    ends, whole = [], False
     for view, thetas in starts(trial):
+        whole = whole or (len(trial.segments) == 1 and view is trial.segments[0])
         close = Problem(replace(trial, segments=(view,)), (view,))
-        for theta in thetas:
-            found = _tried(carrier, close, theta, 15)
-            if found is not None:
-                ends.append(found.theta)
+        ends.extend(_near_ends(carrier, close, thetas))
     scored = []
     for theta in ends:
         _, shared, dead = trial.form.split(_normal(trial, theta))
@@ -81,6 +79,8 @@ def _first(problem: Problem, carrier: Carrier, start: Array | None) -> Found:
         if np.isfinite(cost) and np.all(np.isfinite(better)):
             scored.append((cost, better))
     scored.sort(key=lambda pair: pair[0])
+    if whole:
+        scored = scored[:1]
     best: Found | None = None
     done: list[float] = []
     for cost, theta in scored:
@@ -97,6 +97,19 @@ def _first(problem: Problem, carrier: Carrier, start: Array | None) -> Found:
             code="no-convergence",
         )
     return best if best.converged else carrier.minimise(_reduced(problem), best.theta, evaluations=200)
+
+
+def _near_ends(carrier: Carrier, problem: Problem, thetas: list[Array]) -> list[Array]:
+    """Where short fits from the starts end; once the two best starts end at one place, the others are not tried."""
+    ends: list[Found] = []
+    for theta in thetas:
+        found = _tried(carrier, problem, theta, 20)
+        if found is None:
+            continue
+        if ends and abs(found.cost - ends[0].cost) <= 1e-6 * ends[0].cost:
+            break
+        ends.append(found)
+    return [found.theta for found in ends]
 
 
 def _tried(carrier: Carrier, problem: Problem, theta: Array, evaluations: int) -> Found | None:

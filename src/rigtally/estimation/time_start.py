@@ -25,7 +25,7 @@ DAMPING = (0.05, 0.5, 1.5)
 
 def denominators(form: Form, low: float, high: float) -> Iterator[Array]:
     """Shared parameters of candidate denominators between two angular frequencies."""
-    steps = max(round(4 * np.log10(high / low)), 4)
+    steps = max(round(3 * np.log10(high / low)), 4)
     for w in np.geomspace(low, high, steps):
         if form.family == "first-order":
             yield np.array([1.0 / w])
@@ -146,7 +146,7 @@ def linear_denominators(trial: Trial, view: Segment, low: float, high: float, de
     """Denominators by linear least squares on filtered equations, the filter then replaced by what was found.
 
     With any stable F of A's degree, A y = B u reads Σ a_m (s^m/F) y = Σ b_k (s^k/F) u + free responses of F + a
-    constant: linear in a and b. F = (s + λ)^n for a ladder of λ; then F = A, three times over (Steiglitz &
+    constant: linear in a and b. F = (s + λ)^n for a ladder of λ; then F = A, twice over (Steiglitz &
     McBride, IEEE Transactions on Automatic Control 10 (1965) 461, here in continuous time; from memory).
     Where the input is not logged, the stretch after the event is a free response and needs no input.
     """
@@ -165,7 +165,7 @@ def linear_denominators(trial: Trial, view: Segment, low: float, high: float, de
     for rate in np.geomspace(low, high, max(round(2 * np.log10(high / low)), 3)):
         unit = 1.0 / rate
         filter_ = np.poly(-np.ones(form.degree))[::-1]
-        for _ in range(4):
+        for _ in range(3):
             coefficients = _one_pass(
                 form, filter_, inputs, outputs, view.interval / unit, between, dead / unit
             )

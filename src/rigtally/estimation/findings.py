@@ -1,0 +1,164 @@
+"""What a reader of a fit has to know: tests of the residual, of the assumptions, of the sampling."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy import stats
+
+from rigtally.estimation.result import RoadResult, Warning_
+from rigtally.estimation.trial import Segment, Trial
+from rigtally.forms.named import Form
+
+Array = NDArray[np.float64]
+RARE = 1e-4  # probability below which a test speaks up: one false alarm in ten thousand records
+LAGS = 24
+
+
+def lag_one(residual: Array) -> float:
+    """Autocorrelation of a residual at lag one (NaN samples left out)."""
+    r = residual[np.isfinite(residual)]
+    r = r - r.mean()
+    power = float(r @ r)
+    return float(r[1:] @ r[:-1] / power) if power > 0 else math.nan
+
+
+def slow_residual(residual: Array, effective: float) -> bool:
+    """Whether what is left moves slowly and far beyond its sample-to-sample noise.
+
+    Third differences see the noise alone (their sum of squared weights is 20); a residual of few independent
+    samples that is three times that noise is structure, not noise. Common practice, no source.
+    """
+    r = residual[np.isfinite(residual)]
+    if r.size < 20:
+        return False
+    noise = float(np.std(np.diff(r, 3))) / math.sqrt(20.0)
+    return effective < 20.0 and float(np.std(r)) > 3.0 * noise
+
+
+def correlation_with_input(residual: Array, inputs: Array, later: bool) -> float:
+    """p-value of the residual's regression on the input's moves at earlier (or later) samples.
+
+    Both are whitened by the residual's own autoregression; the lagged moves are made orthonormal, since those
+    of a step are nearly alike. F test of the regression (Draper & Smith, from memory).
+    """
+    n = residual.size
+    if n < 6 * LAGS or not np.all(np.isfinite(residual)):
+        return 1.0
+    from rigtally.estimation.residual_colour import whiten
+
+    white, filtered = whiten(residual, inputs)
+    stride = max(n // 400, 1)
+    lags = np.unique(np.round(np.geomspace(1, max(stride * LAGS, LAGS + 1), LAGS)).astype(int))
+    columns = []
+    for row in filtered:
+        for lag in lags:
+            moved = np.zeros(n)
+            if later:
+                moved[:-lag] = row[lag:]
+            else:
+                moved[lag:] = row[:-lag]
+            columns.append(moved - moved.mean())
+    table = np.array(columns).T
+    u, s, _ = np.linalg.svd(table, full_matrices=False)
+    rank = int(np.sum(s > 1e-3 * max(float(s[0]), 1e-300)))
+    if rank == 0 or n - rank < 20:
+        return 1.0
+    white = white - white.mean()
+    part = u[:, :rank].T @ white
+    explained, total = float(part @ part), float(white @ white)
+    if total <= 0:
+        return 1.0
+    ratio = (explained / rank) / max((total - explained) / (n - rank), 1e-300)
+    return float(stats.f.sf(ratio, rank, n - rank))
+
+
+def residual_findings(trial: Trial, segments: Sequence[Segment], result: RoadResult) -> list[Warning_]:
+    """Does the form hold? Does the residual know the input, or the input's future?"""
+    out: list[Warning_] = []
+    names = trial.form.outputs
+    for i, name in enumerate(names):
+        rests = [s.outputs[i] - f[i] for s, f in zip(segments, result.fitted, strict=True)]
+        longest = max(range(len(rests)), key=lambda k: rests[k].size)
+        if slow_residual(rests[longest], result.effective_samples[i] / len(rests)):
+            out.append(
+                Warning_(
+                    "form-does-not-hold",
+                    f"the form does not hold for {name}: what the fit leaves over moves slowly (autocorrelation at "
+                    f"lag one {lag_one(rests[longest]):.3f}) and far beyond the noise; the parameters' u is not to be "
+                    "relied on. Try another form, or a free drift",
+                )
+            )
+            continue
+        if segments[longest].excitation != "logged" or segments[longest].stamps is not None:
+            continue
+        u = segments[longest].inputs
+        if correlation_with_input(rests[longest], u, later=False) < RARE:
+            out.append(
+                Warning_(
+                    "form-does-not-hold",
+                    f"the form does not hold for {name}: what the fit leaves over still follows the input "
+                    f"(probability by chance below {RARE:g}); try a form of higher order, or look for non-linearity",
+                )
+            )
+        elif correlation_with_input(rests[longest], u, later=True) < RARE:
+            out.append(
+                Warning_(
+                    "feedback",
+                    f"what the fit of {name} leaves over goes before the input: the bench seems to be regulated by "
+                    "this output. The estimate may be biased; log the set point and use it as the input",
+                )
+            )
+    return out
+
+
+def sampling_findings(form: Form, theta: Array, interval: float, between: str) -> list[Warning_]:
+    """Sampling too slow for the fitted frequency: below twenty samples in a period of fn.
+
+    Rule: AD0404383 (1963), sampling at 20 times the highest frequency for 0.5 % (abstract opened).
+    """
+    names = form.names
+    if between == "held" or not np.isfinite(interval):
+        return []
+    if "natural_frequency" in names:
+        w = float(theta[names.index("natural_frequency")])
+        what = "natural frequency"
+    elif "time_constant" in names:
+        w = 1.0 / float(theta[names.index("time_constant")])
+        what = "corner frequency"
+    else:
+        return []
+    ratio = 2.0 * math.pi / (w * interval) if w > 0 else math.inf
+    if ratio >= 20.0:
+        return []
+    return [
+        Warning_(
+            "coarse-sampling",
+            f"only {ratio:.1f} samples in a period of the fitted {what}: what the input does between samples matters; "
+            "sample at 20 times that frequency or more",
+        )
+    ]
+
+
+def between_findings(trial: Trial, result: RoadResult, other: RoadResult, word: str) -> list[Warning_]:
+    """By how much another assumption on the input between its samples would move the parameters."""
+    u = np.sqrt(np.diag(result.covariance))
+    moved = []
+    for k, name in enumerate(trial.form.names):
+        if np.isfinite(u[k]) and u[k] > 0:
+            steps = (other.theta[k] - result.theta[k]) / u[k]
+            if abs(steps) > 1.0:
+                moved.append(f"{name} by {steps:+.1f} u")
+    if not moved:
+        return []
+    better = " and fits better" if other.cost < result.cost - 4.0 else ""
+    return [
+        Warning_(
+            "between-assumption",
+            f"the input is taken as {trial.between} between its samples; taken as {word} it moves {', '.join(moved)}"
+            f"{better}",
+        )
+    ]
