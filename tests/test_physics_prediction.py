@@ -305,3 +305,14 @@ def test_a_stated_form_that_cannot_hold_the_network_is_said() -> None:
     found = with_form(series_circuit(), "first-order")
     assert found.form.name == "second-order"
     assert "form-differs" in [w.code for w in found.warnings]
+
+
+def test_few_degrees_of_freedom_widen_the_interval() -> None:
+    """A resistance measured five times (dof 4) is all of τ's uncertainty: t for 4, not the normal 1.96."""
+    b = RigBuilder().element("r", "resistor", ("in", "a"), resistance=Uncertain(10.0, 0.1, dof=4.0))
+    b.element("c", "capacitor", "a", capacitance=1e-6).drive("u", "voltage", "in").reading(
+        "y", "voltage", "a"
+    )
+    tau = predict(b.rig()).parameters["time_constant"]
+    assert tau.dof == pytest.approx(4.0)
+    assert tau.expanded() == pytest.approx(2.776 * 1e-7, rel=1e-3)

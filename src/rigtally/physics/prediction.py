@@ -22,6 +22,7 @@ from rigtally.physics.pencil import System
 from rigtally.physics.prediction_result import Finding, Prediction
 from rigtally.physics.rig import Rig
 from rigtally.physics.tolerance_draws import drawn_inputs, monte_carlo_parameters
+from rigtally.quantities.coverage import effective_dof
 from rigtally.quantities.uncertain import Uncertain
 
 Array = NDArray[np.float64]
@@ -53,9 +54,14 @@ def predict(rig: Rig, *, monte_carlo: int = 0, seed: int = 0, progress: Progress
     covariance = (solved.sensitivity * u**2) @ solved.sensitivity.T
     units = form.units(model.network.output_units, model.network.input_units)
     parameters = {
-        name: Uncertain(float(x), float(s), unit)
-        for name, x, s, unit in zip(
-            form.names, solved.theta, _spread(solved.sensitivity, u), units, strict=True
+        name: Uncertain(float(x), float(s), unit, dof)
+        for name, x, s, unit, dof in zip(
+            form.names,
+            solved.theta,
+            _spread(solved.sensitivity, u),
+            units,
+            _dof(solved.sensitivity, inputs),
+            strict=True,
         )
     }
     warnings = _warnings(model, solved)
@@ -120,6 +126,14 @@ def _without_rounding(solved: Solved, nominal: Array) -> Solved:
     relative = np.abs(solved.sensitivity * nominal)
     zero = (relative < ROUNDING * np.abs(solved.theta)[:, None]) & (nominal != 0.0)
     return replace(solved, sensitivity=np.where(zero, 0.0, solved.sensitivity))
+
+
+def _dof(sensitivity: Array, inputs: tuple[Uncertain, ...]) -> list[float]:
+    """Effective degrees of freedom of each parameter (Welch-Satterthwaite)."""
+    return [
+        effective_dof((c * x.u, x.dof) for c, x in zip(row, inputs, strict=True) if x.u > 0)
+        for row in sensitivity.tolist()
+    ]
 
 
 def _spread(sensitivity: Array, u: Array) -> Array:
