@@ -61,8 +61,8 @@ class Colour:
         return float(np.sum(np.log(self.variances[:-1])))
 
     def effective_share(self) -> float:
-        """Independent samples per sample for the mean: (1 + a₁ + … )²·innovation²/variance."""
-        return min(1.0, float(np.sum(self.predictors[-1])) ** 2 / float(self.variances[0]))
+        """Independent samples per sample for the mean: (1 + a₁ + …)²·variance/innovation²."""
+        return min(1.0, float(np.sum(self.predictors[-1])) ** 2 * float(self.variances[0]))
 
 
 WHITE = Colour((np.ones(1),), np.ones(1), 1.0)
