@@ -316,3 +316,12 @@ def test_few_degrees_of_freedom_widen_the_interval() -> None:
     tau = predict(b.rig()).parameters["time_constant"]
     assert tau.dof == pytest.approx(4.0)
     assert tau.expanded() == pytest.approx(2.776 * 1e-7, rel=1e-3)
+
+
+def test_a_rig_without_losses_is_told_so() -> None:
+    """A mass on a spring: ζ is 0 by the file, and the warning says that no real rig is so."""
+    b = RigBuilder().element("m", "mass", "x", mass=(1.0, 0.01)).element("k", "spring", "x", stiffness=4.0)
+    found = predict(b.drive("f", "force", "x").reading("x", "displacement", "x").rig())
+    assert found.parameters["damping_ratio"].value == 0.0
+    assert "undamped" in [w.code for w in found.warnings]
+    assert "undamped" not in [w.code for w in predict(series_circuit().rig()).warnings]

@@ -219,6 +219,16 @@ def _warnings(model: LineModel, solved: Solved) -> list[Finding]:
                 "unstable", f"the rig is unstable: a pole at {_written(unstable[0])}", float(unstable[0].real)
             )
         )
+    undamped = [p for p in solved.poles if p.imag > 0 and abs(p.real) <= 1e-12 * abs(p)]
+    if undamped:
+        out.append(
+            Finding(
+                "undamped",
+                f"no element damps the pole pair at {abs(undamped[0]):.4g} rad/s: a real rig has losses that the "
+                "file does not state, and its damping ratio is not 0",
+                float(abs(undamped[0])),
+            )
+        )
     if model.form.integrators:
         out.append(
             Finding(
