@@ -9,7 +9,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from hypothesis import HealthCheck, given, settings
+from hypothesis import HealthCheck, assume, given, settings
 from hypothesis import strategies as st
 
 import rigtally as rt
@@ -89,6 +89,8 @@ def test_any_numbers_read_as_written_or_not_at_all(
 ) -> None:
     """Short logs of any numbers in any marks: the same numbers, or a refusal; never others."""
     decimal, thousands = marks
+    # with a comma between columns and none in the cells a point is the decimal sign, by rule
+    assume(not (separator == "," and thousands == "."))
     width = len(table[0])
     written = [
         [

@@ -291,6 +291,8 @@ class _Body:
         lookalike = [(row, cell) for row, cell in found if _python_reads(cell)]
         words = sum(kind(cell.strip()) == "words" for _, cell in found)
         many = len(found) - words > max(3, DAMAGE * count) or len(found) > max(3, 0.5 * count)
+        # in a short column a number of another habit is no damage
+        many |= len(other) > 0.05 * count
         if many or lookalike:
             row, cell = (lookalike or found)[0]
             raise LogError(
