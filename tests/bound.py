@@ -32,7 +32,12 @@ def second_order(theta: Array, u: Array, interval: float, state: Array) -> Array
 
 
 def bound(
-    model: Callable[[Array], Array], values: Array, sigma: float, keep: int, steps: Array | None = None, rho: float = 0.0
+    model: Callable[[Array], Array],
+    values: Array,
+    sigma: float,
+    keep: int,
+    steps: Array | None = None,
+    rho: float = 0.0,
 ) -> Array:
     """Standard deviations of the first `keep` of all parameters of `model` at `values`.
 

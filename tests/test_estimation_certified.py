@@ -30,7 +30,9 @@ MGH17 = [
 ]  # fmt: skip
 
 
-def unlogged(name: str, stamps: object, values: object, excitation: str, size: float = 1.0, **options: object) -> RoadResult:
+def unlogged(
+    name: str, stamps: object, values: object, excitation: str, size: float = 1.0, **options: object
+) -> RoadResult:
     """Fit a test at stated stamps that begins at zero."""
     time = np.asarray(stamps, dtype=float)
     segment = Segment(

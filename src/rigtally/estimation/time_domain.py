@@ -9,7 +9,7 @@ and 16; Golub & Pereyra (1973) for the projection (both from memory).
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -96,7 +96,7 @@ def _first(problem: Problem, carrier: Carrier, start: Array | None) -> Found:
             do="look at the log with `rigtally inspect`, or try another form",
             code="no-convergence",
         )
-    return best if best.converged else carrier.minimise(_reduced(problem), best.theta, evaluations=200)
+    return carrier.minimise(_reduced(problem), best.theta, evaluations=200)
 
 
 def _near_ends(carrier: Carrier, problem: Problem, thetas: list[Array]) -> list[Array]:
@@ -179,8 +179,8 @@ def covariance_of(jacobian: Array, moves: Array, varying: list[int]) -> tuple[Ar
     root = (vt.T * inverse) / np.where(dead, 1.0, size)[:, None]
     small = root @ root.T
     lost_in = set(np.flatnonzero(np.any(np.abs(vt[weak]) > 0.1, axis=0))) | set(np.flatnonzero(dead))
-    out = moves.T @ small @ moves
-    lost = sorted({j for k in lost_in for j in np.flatnonzero(moves[k])})
+    out = np.asarray(moves.T @ small @ moves)
+    lost = sorted({int(j) for k in lost_in for j in np.flatnonzero(moves[k])})
     for j in lost:
         out[j, :] = np.nan
         out[:, j] = np.nan
@@ -241,7 +241,8 @@ def profile(trial: Trial, result: RoadResult, name: str, probability: float = 0.
     """Interval of one parameter from the profile of the whitened likelihood.
 
     The parameter is held (lmfit) at values further and further away while all others are fitted again; an end
-    lies where the cost has grown by t². An end that is not reached within six decades is open (±inf).
+    lies where the cost has grown by t². An end that lies beyond what the record can resolve is open (±inf, or 0 for
+    a positive parameter).
     """
     names = trial.form.names
     k = names.index(name)
@@ -253,26 +254,80 @@ def profile(trial: Trial, result: RoadResult, name: str, probability: float = 0.
     rise = coverage_factor(probability, result.dof) ** 2
     reduced = _reduced(problem)
     positive = name in ("natural_frequency", "time_constant", "damping_ratio", "dead_time") and centre > 0
+    lowest, highest = _resolvable(trial, name)
     u = float(np.sqrt(result.covariance[k, k]))
     if not np.isfinite(u) or u <= 0:
         u = 0.5 * abs(centre) or 1.0
+    walk = _Walk(carrier, reduced, name, k, found.cost + rise)
     ends = []
     for sign in (-1.0, 1.0):
-        theta, inside, step, end = found.theta, 0.0, 1.0, sign * np.inf
-        for _ in range(40):
+        here, before, step, taken = found.theta, found.theta, 1.0, 1.0
+        inside, end = 0.0, sign * np.inf
+        for _ in range(60):
             value = _away(centre, u, sign * step, positive)
-            there = carrier.minimise(reduced, theta, held={name: value}, evaluations=40)
-            if there.cost - found.cost >= rise:
-                end = _between(
-                    carrier, reduced, name, found, theta, rise, centre, u, sign, inside, step, positive
-                )
-                break
-            theta, inside, step = there.theta, step, step * 1.6
-            if positive and not 1e-6 < value / centre < 1e6:
+            if positive and (value < lowest if sign < 0 else value > highest):
                 end = 0.0 if sign < 0 else np.inf
                 break
+            cost, there = walk.at(value, here, before)
+            if cost >= walk.level:
+                for _ in range(8):
+                    middle = 0.5 * (inside + step)
+                    cost, there = walk.at(_away(centre, u, sign * middle, positive), here, before)
+                    if cost >= walk.level:
+                        step = middle
+                    else:
+                        inside, before, here = middle, here, there
+                end = _away(centre, u, sign * 0.5 * (inside + step), positive)
+                break
+            before, here, inside = here, there, step
+            taken = (
+                min(1.6 * taken, 1.5 * centre / u) if positive and u < 1.5 * centre else min(1.6 * taken, 1.5)
+            )
+            step += taken
         ends.append(float(end))
     return ends[0], ends[1]
+
+
+@dataclass(frozen=True)
+class _Walk:
+    """Along the profile of one parameter: all others fitted again from where the walk was."""
+
+    carrier: Carrier
+    reduced: Callable[[Array], tuple[Array, Array]]
+    name: str
+    place: int
+    level: float
+
+    def at(self, value: float, here: Array, before: Array) -> tuple[float, Array]:
+        """Lowest cost with the parameter held at `value`, from the last point and from the last two drawn on."""
+        guesses = [here]
+        moved = here[self.place] / before[self.place] if before[self.place] else 1.0
+        if moved > 0 and moved != 1.0 and value / here[self.place] > 0:
+            power = np.log(value / here[self.place]) / np.log(moved)
+            with np.errstate(all="ignore"):
+                drawn = np.where(here * before > 0, here * (here / before) ** power, here)
+            if np.all(np.isfinite(drawn)):
+                guesses.insert(0, drawn)
+        best_cost, best = np.inf, here
+        for guess in guesses:
+            found = self.carrier.minimise(self.reduced, guess, held={self.name: value}, evaluations=40)
+            if found.cost < best_cost:
+                best_cost, best = found.cost, found.theta
+            if best_cost < self.level:
+                break
+        return best_cost, best
+
+
+def _resolvable(trial: Trial, name: str) -> tuple[float, float]:
+    """Values of a positive parameter beyond which the record cannot tell one from another: rates of a thousandth
+    of a radian in the longest segment, and a thousand times half the sampling rate."""
+    slow = min(1e-3 / float(np.ptp(segment.time)) for segment in trial.segments)
+    fast = max(1e3 * np.pi / float(np.median(np.diff(segment.time))) for segment in trial.segments)
+    if name == "natural_frequency":
+        return slow, fast
+    if name in ("time_constant", "dead_time"):
+        return 1.0 / fast, 1.0 / slow
+    return slow / fast, 0.5 * float(np.sqrt(fast / slow))  # two real poles, one at each end, have that ζ
 
 
 def _away(centre: float, u: float, steps: float, positive: bool) -> float:
@@ -280,19 +335,3 @@ def _away(centre: float, u: float, steps: float, positive: bool) -> float:
     if positive:
         return float(centre * np.exp(steps * min(u / centre, 1.0)))
     return centre + steps * u
-
-
-def _between(
-    carrier: Carrier, reduced: object, name: str, found: Found, theta: Array, rise: float, centre: float, u: float,
-    sign: float, inside: float, outside: float, positive: bool,
-) -> float:  # fmt: skip
-    """Halve the step in which the profile crosses the level, eight times."""
-    for _ in range(8):
-        middle = 0.5 * (inside + outside)
-        value = _away(centre, u, sign * middle, positive)
-        there = carrier.minimise(reduced, theta, held={name: value}, evaluations=40)  # type: ignore[arg-type]
-        if there.cost - found.cost >= rise:
-            outside = middle
-        else:
-            inside, theta = middle, there.theta
-    return _away(centre, u, sign * 0.5 * (inside + outside), positive)

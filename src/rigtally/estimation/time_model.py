@@ -2,7 +2,9 @@
 
 y = Σ b_k (s^k/A) u + free response + offset + drift. With X_k = (s^k/A) u and S_k = (s^k/A²) u,
 
-    ∂y/∂b_k = X_k,    ∂y/∂a_m = -Σ_k b_k S_{k+m},    ∂y/∂(dead time) = -Σ_k b_k X_{k+1}.
+    ∂y/∂b_k = X_k,    ∂y/∂a_m = -Σ_k b_k S_{k+m},    ∂y/∂(dead time) = -Σ_k b_k X_{k+1}
+
+(the last without the jump at the record's begin).
 """
 
 from __future__ import annotations
@@ -28,12 +30,14 @@ class Responses:
     ----------
     over_a : (r, n + 1, N), s^k/A u
     over_a2 : (r, 2n + 1, N), s^k/A² u; (r, 0, N) where no derivative is asked for
+    by_dead : (r, n + 1, N), derivatives of s^k/A u by the dead time; (r, 0, N) where there is none
     free : (n, N), free responses, each of unit norm
     free_slopes : (n, n, N), their derivatives by the coefficients a_m (second axis), outside their own span
     """
 
     over_a: Array
     over_a2: Array
+    by_dead: Array
     free: Array
     free_slopes: Array
 
@@ -90,12 +94,36 @@ def responses(form: Form, theta: Array, segment: Segment, trial: Trial, slopes: 
         over_a2[:, :n] = states[:, n:]
         for k in range(n + 1):
             over_a2[:, n + k] = over_a[:, k] - np.tensordot(den[:n], over_a2[:, k : k + n], axes=(0, 1))
+    by_dead = np.zeros((r, 0, count))
+    if slopes and form.dead_time:
+        by_dead = _by_dead_time(a[:n, :n], over_a, scaled, trial.between, dead)
+        by_dead *= unit ** (n - 1 - np.arange(n + 1.0))[:, None]
     over_a *= unit ** (n - np.arange(n + 1.0))[:, None]
     over_a2 *= unit ** (2 * n - np.arange(over_a2.shape[1], dtype=float))[:, None]
     free, free_slopes = _free(a, n, scaled, slopes)
     if slopes:
         free_slopes *= unit ** (n - np.arange(n, dtype=float))[:, None]
-    return Responses(over_a, over_a2, free, free_slopes)
+    return Responses(over_a, over_a2, by_dead, free, free_slopes)
+
+
+def _by_dead_time(a: Array, over_a: Array, segment: Segment, between: str, dead: float) -> Array:
+    """(r, n + 1, N) ∂(s^k/A u)/∂(dead time): -s^(k+1)/A u, without the jump from rest to the first input, since a
+    logged input is taken as steady before the record."""
+    n = a.shape[0]
+    out = np.empty_like(over_a)
+    out[:, :n] = -over_a[:, 1:]
+    slope = np.zeros((over_a.shape[0], segment.count))
+    if segment.excitation == "logged":
+        time = segment.time
+        jump = flow(a, np.eye(n)[:, -1:], time - time[0])[:, 0]
+        out[:, :n] += segment.inputs[:, 0, None, None] * jump
+        if between != "held":
+            place = np.searchsorted(time + dead, time, side="right") - 1
+            rates = np.diff(segment.inputs, axis=1) / np.diff(time)
+            within = (place >= 0) & (place < rates.shape[1])
+            slope[:, within] = rates[:, place[within]]
+    out[:, n] = -slope + np.tensordot(a[-1], out[:, :n], axes=(0, 1))
+    return out
 
 
 def _free(a: Array, n: int, segment: Segment, slopes: bool) -> tuple[Array, Array]:
@@ -137,8 +165,8 @@ def outputs_and_derivatives(form: Form, theta: Array, found: Responses, count: i
         y[i] += value * found.over_a[j, power]
         dy[:, i] += np.outer(grad, found.over_a[j, power])
         dy[first:last, i] -= value * (da @ found.over_a2[j, power : power + n])
-        if form.dead_time and power < n:
-            dy[last, i] -= value * found.over_a[j, power + 1]
+        if form.dead_time:
+            dy[last, i] += value * found.by_dead[j, power]
     return y, dy
 
 

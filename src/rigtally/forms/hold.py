@@ -117,16 +117,26 @@ def exponentials(a: Array, durations: Array) -> Array:
     return out
 
 
+def _powers(step: Array, count: int) -> Array:
+    """(count, n, n) step^0 … step^(count - 1), by doubling."""
+    out = np.eye(step.shape[0])[None]
+    while out.shape[0] < count:
+        out = np.concatenate([out, out @ step])
+        step = step @ step
+    return out[:count]
+
+
 def flow(a: Array, initial: Array, times: Array) -> Array:
     """(n, c, N) exp(a t) x0 for the columns x0 of `initial` (n, c) at times (N,), uniform or not."""
     count = times.size
     steps = np.diff(times)
     if count > 4 * BLOCK and np.ptp(steps) <= 1e-9 * float(np.mean(steps)):
-        # exp(a t[i·L + j]) = exp(a j T) exp(a (t[0] + i L T)): two short lists of exponentials and one product
+        # exp(a t[i·L + j]) = exp(a T)^j (exp(a T)^L)^i exp(a t[0]): two short lists of powers and one product
         length = int(np.ceil(np.sqrt(count)))
         interval = float(times[-1] - times[0]) / (count - 1)
-        coarse = exponentials(a, times[0] + interval * length * np.arange(-(-count // length))) @ initial
-        fine = exponentials(a, interval * np.arange(length))
+        begin, step = exponentials(a, np.array([times[0], interval]))
+        fine = _powers(step, length)
+        coarse = _powers(fine[-1] @ step, -(-count // length)) @ (begin @ initial)
         out = np.tensordot(fine, coarse, axes=(2, 1))  # (length, n, blocks, c)
         return out.transpose(1, 3, 2, 0).reshape(a.shape[0], initial.shape[1], -1)[:, :, :count]
     return np.asarray((exponentials(a, times) @ initial).transpose(1, 2, 0))
