@@ -117,7 +117,7 @@ def test_any_numbers_read_as_written_or_not_at_all(
     np.testing.assert_array_equal(read, truth)
 
 
-@pytest.mark.parametrize("separator", [";", ",", "\t", " "])
+@pytest.mark.parametrize("separator", [",", " "])
 def test_every_byte_in_a_cell(separator: str, tmp_path: Path) -> None:
     """Each of 255 bytes put into a cell, before it and behind it, leaves the other cells where they are."""
     path = tmp_path / "log.csv"
