@@ -148,14 +148,15 @@ def reference_draws(
     total = total[np.all(np.isfinite(total), axis=1)]
     if np.isinf(d.dof) or not np.any(d.noise):
         return np.asarray(np.sum((total @ m.root.T) ** 2, axis=1))
-    s2 = rng.chisquare(d.dof, total.shape[0]) / d.dof
+    s2: Array = np.asarray(rng.chisquare(d.dof, total.shape[0])) / d.dof
     own = m.root @ d.noise @ m.root.T
     inside = total @ m.root.T
     # root·C·rootᵀ = 1: in the eigenvectors of the noise's part both parts are diagonal
     values, vectors = np.linalg.eigh(0.5 * (own + own.T))
     share = np.clip(values, 0.0, 1.0)
-    turned = inside @ vectors
-    return np.asarray(np.sum(turned**2 / (s2[:, None] * share + (1.0 - share)), axis=1))
+    turned: Array = inside @ vectors
+    spread: Array = np.outer(s2, share) + (1.0 - share)
+    return np.asarray(np.sum(turned**2 / spread, axis=1), dtype=np.float64)
 
 
 def _evaluated(prediction: Prediction, values: Array) -> Array:
@@ -184,7 +185,7 @@ def smallest_found(m: Metric, joint: Joint, power: float = 0.95) -> Array:
     if not m.rank or not np.isfinite(joint.critical):
         return np.full(m.root.shape[1], np.nan)
     needed = noncentrality(power, m.rank, joint.critical)
-    precision = np.sum(m.root**2, axis=0)
+    precision: Array = np.sum(m.root**2, axis=0)
     if m.blind.size:
         precision = np.where(np.max(np.abs(m.blind), axis=0) > TINY, np.inf, precision)
     return np.asarray(np.sqrt(needed / precision), dtype=np.float64)
