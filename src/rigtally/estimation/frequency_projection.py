@@ -91,7 +91,8 @@ def output_columns(
         value = values[0].T
         if not derivatives:
             return value, np.zeros((0, *value.shape))
-        return value, np.pad(slopes[0], ((0, 0), (0, fixed), (0, 0))).transpose(0, 2, 1)
+        still = np.zeros((k, fixed, value.shape[0]))
+        return value, np.concatenate([slopes[0], still], axis=1).transpose(0, 2, 1)
     rows = sum(v.shape[1] for v in values)
     width = len(mine) + sum(v.shape[0] - len(mine) for v in values)
     value, slope = np.zeros((rows, width)), np.zeros((k, rows, width))

@@ -22,6 +22,7 @@ ComplexArray = NDArray[np.complex128]
 
 _ROUNDS = 4  # of the denominator weight
 _KEPT = 4  # candidates that are refined
+_FIRST_STEPS, _FINISHED, _LAST_STEPS = 6, 2, 25  # a few steps for each, then many for the best
 
 
 @dataclass(frozen=True)
@@ -77,21 +78,31 @@ def scout(problem: Problem, *, wide: bool) -> list[Descent]:
             for s, b in zip(problem.segments, problem.bins, strict=True)
         ),
     )
-    refined: list[Descent] = []
     tried: list[Candidate] = []
+    refined: list[Descent] = []
     for candidate in candidates(thin, wide=wide):
+        if len(tried) >= _KEPT * (2 if wide else 1):
+            break
         if any(_same(candidate, other) for other in tried):
             continue
         tried.append(candidate)
-        scaled, phi = in_scale(thin, candidate.shared, candidate.dead_time)
-        found = descend(scaled, phi, steps=25, tolerance=1e-4)
-        if found is not None:
-            powers = scaled.scale ** problem.form.time_powers[problem.form.numerator_count :]
-            refined.append(replace(found, phi=found.phi * powers))
-        if len(tried) >= (_KEPT if not wide else 2 * _KEPT):
-            break
+        refined += _short_descent(thin, np.append(candidate.shared, candidate.dead_time), _FIRST_STEPS)
     refined.sort(key=lambda d: d.cost)
-    return refined
+    finished: list[Descent] = []
+    for one in refined[:_FINISHED]:
+        dead = one.phi if thin.form.dead_time else np.append(one.phi, 0.0)
+        finished += [one] if one.converged else _short_descent(thin, dead, _LAST_STEPS)
+    return sorted([*finished, *refined[_FINISHED:]], key=lambda d: d.cost)
+
+
+def _short_descent(thin: Problem, start: Array, steps: int) -> list[Descent]:
+    """A few steps from (shared, dead time), both in SI; the result in SI; empty where the start is no good."""
+    scaled, phi = in_scale(thin, start[:-1], float(start[-1]))
+    found = descend(scaled, phi, steps=steps, tolerance=1e-3)
+    if found is None:
+        return []
+    powers = scaled.scale ** thin.form.time_powers[thin.form.numerator_count :]
+    return [replace(found, phi=found.phi * powers)]
 
 
 def _same(one: Candidate, other: Candidate) -> bool:
