@@ -24,7 +24,7 @@ from rigtally.forms.response import gain_with_derivative
 Array = NDArray[np.float64]
 ComplexArray = NDArray[np.complex128]
 ROLL = 1.5  # the filter falls from 1 to 0 between the cut-off and this multiple of it
-LONG = 24.0  # taps reach this many periods of the fall to each side
+LONG = 8.0  # taps reach this many periods of the fall to each side
 LONGEST = 200_001
 
 

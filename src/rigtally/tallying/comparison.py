@@ -84,7 +84,7 @@ def compare_responses(
     `covariance_fit` (p, p) is the fit's with its systematic parts. First order in the parameters.
     """
     ours, theirs = fit.form, prediction.form
-    if ours.outputs != theirs.outputs or ours.inputs != theirs.inputs:
+    if not same_entries(fit, prediction):
         return None
     omega = frequencies(fit)
     theta = np.array([fit.parameters[name].value for name in fit.names])
@@ -112,6 +112,14 @@ def compare_responses(
     return ResponseComparison(
         omega, fitted, predicted, u_f, u_p, p_f, p_p, tallies, whole, ranges, ours.outputs, ours.inputs
     )
+
+
+def same_entries(fit: Fit, prediction: Prediction) -> bool:
+    """Whether both stand between the same places; one output over one input always does."""
+    ours, theirs = fit.form, prediction.form
+    if ours.single and theirs.single:
+        return True
+    return ours.outputs == theirs.outputs and ours.inputs == theirs.inputs
 
 
 def frequencies(fit: Fit) -> Array:
@@ -178,7 +186,7 @@ def compare_time(fit: Fit, prediction: Prediction) -> tuple[TimeComparison, ...]
     The prediction differs from the fitted curve (which holds offset, drift and the start) by the
     response of the difference of the two models to the input's movement since the record's start.
     """
-    if fit.form.outputs != prediction.form.outputs or fit.form.inputs != prediction.form.inputs:
+    if not same_entries(fit, prediction):
         return ()
     between = "held" if fit.between == "held" else "ramped"
     out = []

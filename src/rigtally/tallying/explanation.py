@@ -177,7 +177,7 @@ class _Lift:
             size = np.maximum(np.linalg.norm(by_q, axis=0), 1e-300)
             step = np.linalg.lstsq(by_q / size, residual, rcond=1e-9)[0] / size
             step = np.where(logs, np.clip(step, -1.0, 1.0), step)
-            if np.sum((by_q @ step) ** 2) < 1e-12 * (1.0 + left):
+            if np.sum((by_q @ step) ** 2) < 1e-9 * (1.0 + left):
                 break
             moved = False
             for half in range(12):

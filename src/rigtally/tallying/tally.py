@@ -66,7 +66,7 @@ def tally(
     the_rule = str(rule or said.get("rule", "simple"))
     matters = dict(within if within is not None else said.get("within", {}))
     parts = tuple(systematic if systematic is not None else (rig.systematic if rig is not None else ()))
-    parts = _under_form_names(parts, rig)
+    parts = _under_form_names(parts, rig, (*fit.form.outputs, *fit.form.inputs))
     limits = dict(rig.limits) if rig is not None else {}
 
     d = difference(fit, prediction, parts)
@@ -102,14 +102,18 @@ def tally(
 
 
 def _under_form_names(
-    parts: Sequence[Mapping[str, Any]], rig: Rig | None
+    parts: Sequence[Mapping[str, Any]], rig: Rig | None, known: Sequence[str]
 ) -> tuple[Mapping[str, Any], ...]:
-    """Systematic parts with the names of readings and drives instead of the log's columns."""
+    """Systematic parts with the names of readings and drives where the fit bears those, not the log's columns."""
     if rig is None:
         return tuple(parts)
     names = {x.channel: x.name for x in rig.readings if x.channel}
     names.update({x.channel: x.name for x in rig.drives if x.channel})
-    return tuple({**p, "channel": names.get(p.get("channel", ""), p.get("channel", ""))} for p in parts)
+    out = []
+    for part in parts:
+        channel = str(part.get("channel", ""))
+        out.append(part if channel in known else {**part, "channel": names.get(channel, channel)})
+    return tuple(out)
 
 
 def _with_systematic(fit: Fit, parts: Sequence[Mapping[str, Any]]) -> Any:
