@@ -11,7 +11,7 @@ from scipy import stats
 from rig_builder import RigBuilder
 from rigtally.physics.prediction import predict
 from rigtally.quantities.draws import draw
-from rigtally.tallying.agreement import joint_test, metric, noncentrality
+from rigtally.tallying.agreement import joint_test, metric, noncentrality, with_bend
 from rigtally.tallying.difference import difference
 from rigtally.tallying.explanation import explain
 from tally_cases import circuit, fit_of, impulse, motor, noise_of, nominal, units_of, value
@@ -28,6 +28,7 @@ RIGS = {
     "all-rectangular": circuit("rectangular"),
     "one-dominant-rectangular": dominant(),
     "impulse-line": impulse(),
+    "curved": motor("rectangular"),
 }
 
 
@@ -37,8 +38,9 @@ def test_agrees_as_often_as_stated(name: str, dof: float) -> None:
     """Elements drawn as stated: 'agrees' comes in 94 to 96 % of 8000 simulated fits."""
     p = predict(RIGS[name].rig())
     theta = np.array([p.parameters[n].value for n in p.names])
-    noise = noise_of(theta, 0.004)
+    noise = noise_of(theta, 0.0005 if name == "curved" else 0.004)
     d = difference(fit_of(p.form, theta, noise, units_of(p), dof=dof), p, ())
+    d = with_bend(d, p, np.random.default_rng(1))
     m, joint = joint_test(d, p, 0.95, 40_000, np.random.default_rng(0))
     rng = np.random.default_rng(5)
     count = 8000
@@ -49,9 +51,10 @@ def test_agrees_as_often_as_stated(name: str, dof: float) -> None:
         chi2 = np.sum((gap @ m.root.T) ** 2, axis=1)
     else:  # each log estimates its own noise
         s2 = rng.chisquare(dof, count) / dof
-        every = d.tolerance + noise * s2[:, None, None]
+        every = d.tolerance + d.bend + noise * s2[:, None, None]
         chi2 = np.einsum("ki,ki->k", gap, np.linalg.solve(every, gap[..., None])[..., 0])
     assert 0.94 <= np.mean(chi2 <= joint.critical) <= 0.96
+    assert joint.critical < 3.5 * joint.dof  # curvature is not blown up into distance
 
 
 def test_the_shifted_value_leads() -> None:

@@ -6,7 +6,7 @@ normal and nearly linear, else it is drawn from the stated tolerances with the f
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,6 +19,7 @@ from rigtally.tallying.difference import TINY, Difference
 Array = NDArray[np.float64]
 LARGE_SHARE = 0.2  # of a variance by one value that is not normal: then Monte Carlo
 CURVED = 0.1  # of u: how far a tolerance may bend a parameter before Monte Carlo
+BEND_DRAWS = 4000
 FEW = 300.0  # degrees of freedom below which the noise's own uncertainty counts
 
 
@@ -106,8 +107,15 @@ def _why_draws(d: Difference, prediction: Prediction) -> str:
             return f"a {x.distribution} tolerance carries more than 20 % of a variance"
     if d.dof < FEW and np.any(np.diag(d.noise) > 0.01 * variance):
         return f"the fit's noise is known with {d.dof:.0f} degrees of freedom"
+    if bends(d, prediction):
+        return "a tolerance is so wide that the prediction bends"
+    return ""
+
+
+def bends(d: Difference, prediction: Prediction) -> bool:
+    """Whether 2 u of some value bends a parameter by more than a tenth of its u, in the joint metric."""
     nominal = np.array([x.value for x in prediction.inputs])
-    spread = np.sqrt(np.where(variance > 0, variance, np.inf))
+    m = metric(d.covariance, d.scale)
     base = prediction.evaluate(nominal)[list(d.rows)]
     for k, x in enumerate(d.values):
         if not x.u > 0.0:
@@ -115,9 +123,39 @@ def _why_draws(d: Difference, prediction: Prediction) -> str:
         moved = nominal.copy()
         moved[k] += 2.0 * x.u
         bend = prediction.evaluate(moved)[list(d.rows)] - base - 2.0 * x.u * d.by_value[:, k]
-        if not np.all(np.abs(bend) <= CURVED * spread):
-            return "a tolerance is so wide that the prediction bends"
-    return ""
+        if not np.linalg.norm(m.root @ bend) <= CURVED * np.sqrt(m.rank):
+            return True
+    return False
+
+
+def with_bend(d: Difference, prediction: Prediction, rng: np.random.Generator) -> Difference:
+    """The difference with the second moment of what its tolerances do beyond first order.
+
+    Where the fit's noise is far smaller than the tolerances, the parameters are tied to a curved surface; a
+    metric that is flat there would blow its curvature up into distance, and hide real differences.
+    """
+    if not d.names or not bends(d, prediction):
+        return d
+    m = metric(d.covariance, d.scale)
+    sample = _sample(d, m, BEND_DRAWS, rng)
+    moved = _evaluated(prediction, sample.T)[:, list(d.rows)] - d.predicted
+    straight = (sample - np.array([[x.value] for x in d.values])).T @ d.by_value.T
+    beyond = (moved - straight)[np.all(np.isfinite(moved), axis=1)]
+    return replace(d, bend=beyond.T @ beyond / max(1, beyond.shape[0]))
+
+
+def _sample(d: Difference, m: Metric, count: int, rng: np.random.Generator) -> Array:
+    """(v, count) draws of the rig's values, drawn in the order of their weight: that in the file is free."""
+    weight = np.array(
+        [
+            float(np.sum((m.root @ column * x.u) ** 2)) if x.u > 0 else 0.0
+            for x, column in zip(d.values, d.by_value.T, strict=True)
+        ]
+    )
+    order = np.argsort(-np.round(weight, 12), kind="stable")
+    sample = np.empty((len(d.values), count))
+    sample[order] = draw([d.values[k] for k in order], count, rng)
+    return sample
 
 
 def reference_draws(
@@ -130,15 +168,7 @@ def reference_draws(
     measured with it, as that of the log was. The order of the values in the file changes nothing:
     they are drawn in the order of their weight.
     """
-    weight = np.array(
-        [
-            float(np.sum((m.root @ column * x.u) ** 2)) if x.u > 0 else 0.0
-            for x, column in zip(d.values, d.by_value.T, strict=True)
-        ]
-    )
-    order = np.argsort(-np.round(weight, 12), kind="stable")
-    sample = np.empty((len(d.values), count))
-    sample[order] = draw([d.values[k] for k in order], count, rng)
+    sample = _sample(d, m, count, rng)
     moved = _evaluated(prediction, sample.T)[:, list(d.rows)] - d.predicted
     noise = rng.standard_normal((count, len(d.names))) @ _square_root(d.noise, d.scale).T
     total = noise - moved

@@ -42,6 +42,8 @@ class Difference:
     systematic : tuple of Uncertain
     scale : (q,) array
         A size for each parameter, so that units do not matter.
+    bend : (q, q) array
+        Second moment of what the tolerances do beyond first order; 0 where that is small.
     """
 
     names: tuple[str, ...]
@@ -58,6 +60,7 @@ class Difference:
     rows: tuple[int, ...]
     values: tuple[Uncertain, ...]
     scale: Array
+    bend: Array
 
     @property
     def tolerance(self) -> Array:
@@ -67,7 +70,7 @@ class Difference:
     @property
     def covariance(self) -> Array:
         """(q, q) covariance of the difference: fit, systematic parts and tolerances."""
-        return self.noise + spread_of(self.by_systematic, self.systematic) + self.tolerance
+        return self.noise + spread_of(self.by_systematic, self.systematic) + self.tolerance + self.bend
 
 
 def spread_of(columns: Array, quantities: Sequence[Uncertain]) -> Array:
@@ -149,6 +152,7 @@ def difference(fit: Fit, prediction: Prediction, systematic: Sequence[Mapping[st
         rows=tuple(there),
         values=tuple(prediction.drawn or prediction.inputs),
         scale=np.where(size > 0, size, 1.0),
+        bend=np.zeros((len(names), len(names))),
     )
 
 

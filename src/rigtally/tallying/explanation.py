@@ -19,7 +19,7 @@ from scipy import stats
 from rigtally.physics.prediction_result import Prediction
 from rigtally.quantities.uncertain import Uncertain
 from rigtally.tallying.agreement import Metric, metric
-from rigtally.tallying.difference import Difference, spread_of
+from rigtally.tallying.difference import Difference
 from rigtally.tallying.troubles import trouble
 
 Array = NDArray[np.float64]
@@ -123,7 +123,7 @@ class _Lift:
         self.prediction = prediction
         self.nominal = np.array([x.value for x in prediction.inputs], dtype=float)
         self.u = np.array([x.u for x in prediction.inputs], dtype=float)
-        self.fixed = d.noise + spread_of(d.by_systematic, d.systematic) + np.diag((1e-8 * d.scale) ** 2)
+        self.fixed = d.covariance - d.tolerance + np.diag((1e-8 * d.scale) ** 2)
 
     def moves(self, k: int, m: Metric) -> bool:
         """Whether a value may be lifted, and moves a compared parameter at all."""

@@ -13,7 +13,15 @@ from rigtally.estimation.result import Fit
 from rigtally.physics.prediction_result import Finding, Prediction
 from rigtally.physics.rig import Rig
 from rigtally.quantities.uncertain import Uncertain
-from rigtally.tallying.agreement import Joint, Metric, en_number, joint_test, power_of, smallest_found
+from rigtally.tallying.agreement import (
+    Joint,
+    Metric,
+    en_number,
+    joint_test,
+    power_of,
+    smallest_found,
+    with_bend,
+)
 from rigtally.tallying.budget import Budget, budgets
 from rigtally.tallying.comparison import compare_responses, compare_time
 from rigtally.tallying.decision import CAUTION, Decision, decide, decide_limits
@@ -70,6 +78,8 @@ def tally(
     limits = dict(rig.limits) if rig is not None else {}
 
     d = difference(fit, prediction, parts)
+    if monte_carlo:
+        d = with_bend(d, prediction, np.random.default_rng(seed + 1))
     found = budgets(fit, parts)
     metric, joint = joint_test(d, prediction, share, monte_carlo, np.random.default_rng(seed))
     parameters = _parameters(fit, prediction, d, metric, joint, found)
