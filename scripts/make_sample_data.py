@@ -107,7 +107,7 @@ def make(folder: Path) -> list[Path]:
     path = line / "after_refill.csv"
     write_csv(
         path,
-        impulse_line(IMPULSE_LINE, air=1.75e-6),
+        impulse_line(IMPULSE_LINE, air=1.75e-6, height=42e3),
         104,
         preamble("pump test bench, discharge gauge", "after refill", 52),
     )

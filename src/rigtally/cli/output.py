@@ -18,6 +18,7 @@ def emit(
     report_file: str | None = None,
     save_file: str | None = None,
     quiet: bool = False,
+    rig: Any = None,
 ) -> None:
     """Write what was asked for; the files first, so that what is printed is true."""
     if save_file:
@@ -25,7 +26,7 @@ def emit(
     if report_file:
         from rigtally.reporting.page import report
 
-        report(result, report_file)
+        report(result, report_file, rig=rig)
     if as_json:
         click.echo(document(result), nl=False)
     elif not quiet:

@@ -43,4 +43,5 @@ def command(rig: str, as_formula: bool, monte_carlo: int | None, **options: Any)
         report_file=options["report_file"],
         save_file=options["save_file"],
         quiet=options["quiet"],
+        rig=checked,
     )

@@ -62,6 +62,7 @@ def command(files: tuple[str, ...], **options: Any) -> int:
         report_file=options["report_file"],
         save_file=options["save_file"],
         quiet=options["quiet"],
+        rig=rig,
     )
     return 1 if options["enforce"] and result.verdict != "agrees" else 0
 
