@@ -17,12 +17,11 @@ import numpy as np
 from scipy import signal, stats
 
 sys.path.insert(0, str(Path(__file__).parents[1] / "tests"))
-from bound import second_order, second_order_bound  # noqa: E402
-
-from rigtally.estimation.frequency_domain import fit_frequency  # noqa: E402
-from rigtally.estimation.time_domain import fit_time  # noqa: E402
-from rigtally.estimation.trial import Segment, Trial  # noqa: E402
-from rigtally.forms.named import form  # noqa: E402
+from bound import second_order, second_order_bound
+from rigtally.estimation.frequency_domain import fit_frequency
+from rigtally.estimation.time_domain import fit_time
+from rigtally.estimation.trial import Segment, Trial
+from rigtally.forms.named import form
 
 ROADS = {"frequency": fit_frequency, "time": fit_time}
 W, INTERVAL = 30.0, 2e-3

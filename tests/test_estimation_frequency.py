@@ -7,10 +7,10 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from bound import second_order, second_order_bound
 from scipy import signal, stats
 from scipy.linalg import expm
 
+from bound import second_order, second_order_bound
 from rigtally.errors import FitError
 from rigtally.estimation.frequency_columns import Problem
 from rigtally.estimation.frequency_domain import fit_frequency

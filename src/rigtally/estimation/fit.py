@@ -19,7 +19,7 @@ from rigtally.estimation.result import Fit, RoadResult, Warning_
 from rigtally.estimation.trial import Trial
 from rigtally.forms.named import Form
 from rigtally.forms.named import form as named_form
-from rigtally.records.record import Record
+from rigtally.records.record import Record, Response
 
 Array = NDArray[np.float64]
 _ROADS = {
@@ -30,7 +30,7 @@ _OTHER = {"time": "frequency", "frequency": "time"}
 
 
 def fit(
-    record: Record | Sequence[Record] | None = None,
+    record: Record | Response | Sequence[Record | Response] | None = None,
     *,
     inputs: str | Sequence[str] | None = None,
     outputs: str | Sequence[str] | None = None,
@@ -65,8 +65,9 @@ def fit(
 
     Parameters
     ----------
-    record : Record or sequence of Records
-        Several records are repeats of one test: they share θ, each has its own offset, drift and start.
+    record : Record, sequence of Records, or Response
+        Several records are repeats of one test: they share θ, each has its own offset, drift and start. A measured
+        frequency response is fitted as such; of the keywords, form, dead_time, set, range and tie apply to it.
     inputs, outputs : str or sequence of str
         Channels.
     input, output : (n,) or (channels, n) arrays, with `interval` in seconds
@@ -103,6 +104,11 @@ def fit(
     Ljung, System Identification (1999); Pintelon & Schoukens, System Identification: A Frequency Domain Approach
     (2012), end terms of a record; Golub & Pereyra (1973), variable projection (all from memory).
     """
+    responses = [
+        r for r in ([record] if not isinstance(record, Sequence) else record) if isinstance(r, Response)
+    ]
+    if responses:
+        return _of_response(responses, form, dead_time, set, range, tie)
     test = unlogged_test(step_at, step_size, release_at, pulse_at, pulse_area)
     if record is None:
         if output is None:
@@ -111,7 +117,7 @@ def fit(
             )
         arranged = from_arrays(input, output, interval, test)
     else:
-        records = [record] if isinstance(record, Record) else list(record)
+        records = cast(list[Record], [record] if not isinstance(record, Sequence) else list(record))
         arranged = from_records(records, _names(inputs), _names(outputs), test)
     chosen = _form(form, arranged, dead_time)
     trial = _trial(
@@ -123,6 +129,43 @@ def fit(
             f"road {road!r} is not known", do="choose time, frequency or both", code="unknown-road"
         )
     return _taken(trial, arranged, primary, checks != "none", drift is None)
+
+
+def _of_response(
+    responses: Sequence[Response],
+    form: str | Form,
+    dead_time: bool,
+    held: Mapping[str, float] | None,
+    ranges: Mapping[str, tuple[float, float]] | None,
+    ties: Mapping[str, str] | None,
+) -> Fit:
+    """One measured frequency response."""
+    from rigtally.estimation.response_fit import fit_response
+
+    if len(responses) > 1:
+        raise UsageError(
+            f"{len(responses)} response tables were given", do="give one at a time", code="one-response"
+        )
+    one = responses[0]
+    shape = form if isinstance(form, Form) else named_form(form, dead_time=dead_time)
+    if isinstance(form, Form) and dead_time:
+        shape = form.with_dead_time()
+    if (len(shape.outputs), len(shape.inputs)) != one.gain.shape[1:]:
+        raise UsageError(
+            f"the form has {len(shape.outputs)} outputs and {len(shape.inputs)} inputs, the table "
+            f"{one.gain.shape[1]} and {one.gain.shape[2]}",
+            where=one.provenance.file,
+            do="choose a form of the same shape",
+            code="bad-shape",
+        )
+    for name in {**(held or {}), **(ranges or {}), **(ties or {})}:
+        if name not in shape.names:
+            raise UsageError(
+                f"the form {shape.name} has no parameter {name!r}",
+                do="it has: " + ", ".join(shape.names),
+                code="unknown-parameter",
+            )
+    return fit_response(one, shape, held=held, ranges=ranges, ties=ties)
 
 
 def _taken(trial: Trial, arranged: Arranged, primary: str, checked: bool, look_for_drift: bool) -> Fit:

@@ -114,10 +114,7 @@ def columns(
         m = bins.index.size
         driven, ddriven = np.zeros((len(slots), m), complex), np.zeros((kept, len(slots), m), complex)
         if slots:
-            if segment.hold == "band-limited":
-                make = _smooth_input
-            else:
-                make = _sampled_input
+            make = _smooth_input if segment.hold == "band-limited" else _sampled_input
             driven, ddriven = make(
                 problem,
                 segment,
@@ -203,7 +200,7 @@ def _smooth_input(
 ) -> tuple[ComplexArray, ComplexArray]:
     """Band-limited inputs: s^p/den·exp(−sL) at s = jω, exact but for the record's ends."""
     whole, fraction, interval = lag
-    s = 1j * segment.angle(bins.index) / interval
+    s: ComplexArray = 1j * segment.angle(bins.index) / interval
     with np.errstate(divide="ignore", invalid="ignore"):
         inverse = 1.0 / horner(den, s)
     if problem.form.integrators:

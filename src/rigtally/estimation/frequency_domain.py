@@ -131,7 +131,7 @@ def _clearly_good(problem: Problem, found: Descent) -> bool:
     # high bins on a thinned grid stand for many: the median of their power per bin is compared on equal weight
     count = problem.segments[0].count // 2
     weight = max(1.0, (count - share / 3) / (share * 2 / 3))
-    return low < 1.5 * high / weight / np.log(2.0) * np.log(2.0) + 1e-12 * low
+    return bool(low < 1.5 * high / weight)
 
 
 def _used_bins(problem: Problem, shared: Array) -> tuple[Bins, ...]:
@@ -347,7 +347,7 @@ def _result(
     freedom = problem.numbers - linear_count - free - sum(c.order for c in colours)
     stated = not isinstance(trial.noise, str)
     if stated:
-        scale = float(trial.noise) / problem.sigma  # type: ignore[arg-type]
+        scale = float(trial.noise) / problem.sigma
         variance = float(np.mean(scale**2))
         dof = float("inf")
     else:

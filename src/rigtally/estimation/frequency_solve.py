@@ -17,6 +17,7 @@ from rigtally.errors import FitError, UsageError
 from rigtally.estimation.frequency_columns import Problem
 from rigtally.estimation.frequency_projection import Projection, project, project_given
 from rigtally.estimation.trial import Trial
+from rigtally.forms.named import Form
 
 Array = NDArray[np.float64]
 
@@ -134,7 +135,7 @@ def constrained(problem: Problem, theta: Array, trial: Trial) -> Constrained:
     """
     import lmfit
 
-    parameters, names = _lmfit_parameters(lmfit, problem, theta, trial)
+    parameters, names = lmfit_parameters(problem.form, theta, trial)
     powers = problem.scale**problem.form.time_powers
 
     def values(p: Any) -> Array:
@@ -186,8 +187,10 @@ def _row_count(problem: Problem) -> int:
     return rows * len(problem.form.outputs)
 
 
-def _lmfit_parameters(lmfit: Any, problem: Problem, theta: Array, trial: Trial) -> tuple[Any, list[str]]:
-    form = problem.form
+def lmfit_parameters(form: Form, theta: Array, trial: Trial) -> tuple[Any, list[str]]:
+    """lmfit's parameters with the user's held values, ranges and ties, and their names in the order of θ."""
+    import lmfit
+
     names = [lmfit_name(name) for name in form.names]
     known = set(form.names)
     for name in [*trial.held, *trial.ranges, *trial.ties]:

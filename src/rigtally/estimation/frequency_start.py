@@ -205,7 +205,8 @@ def _linearised(problem: Problem, dead_time: float, used: int) -> ComplexArray |
         roots - 0.5 * unit * roots**2,
         np.log(inside) / unit,
     )
-    return -np.abs(poles.real) + 1j * poles.imag
+    stable: ComplexArray = -np.abs(poles.real) + 1j * poles.imag
+    return stable
 
 
 def _as_parameters(problem: Problem, poles: ComplexArray) -> list[Array]:
@@ -220,7 +221,7 @@ def _as_parameters(problem: Problem, poles: ComplexArray) -> list[Array]:
     # a lone complex pole (its conjugate lost at half the sampling rate) stands as a real one
     matched = [bool(np.any(np.isclose(np.conj(p), poles, rtol=1e-6))) for p in poles]
     poles = np.where(matched, poles, -np.abs(poles))
-    monic = np.real(np.polynomial.polynomial.polyfromroots(poles))
+    monic: Array = np.real(np.polynomial.polynomial.polyfromroots(poles)).astype(float)
     out = [form.shared_from(monic)]
     if form.family == "first-order":
         return out
