@@ -200,7 +200,7 @@ def _smooth_input(
 ) -> tuple[ComplexArray, ComplexArray]:
     """Band-limited inputs: s^p/den·exp(−sL) at s = jω, exact but for the record's ends."""
     whole, fraction, interval = lag
-    s: ComplexArray = 1j * segment.angle(bins.index) / interval
+    s: ComplexArray = (1j * segment.angle(bins.index) / interval).astype(np.complex128)
     with np.errstate(divide="ignore", invalid="ignore"):
         inverse = 1.0 / horner(den, s)
     if problem.form.integrators:
