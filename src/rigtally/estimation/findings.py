@@ -7,7 +7,7 @@ from collections.abc import Sequence
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy import stats
+from scipy import special
 
 from rigtally.estimation.result import RoadResult, Warning_
 from rigtally.estimation.trial import Segment, Trial
@@ -73,7 +73,7 @@ def correlation_with_input(residual: Array, inputs: Array, later: bool) -> float
     if total <= 0:
         return 1.0
     ratio = (explained / rank) / max((total - explained) / (n - rank), 1e-300)
-    return float(stats.f.sf(ratio, rank, n - rank))
+    return float(special.fdtrc(rank, n - rank, ratio))
 
 
 def residual_findings(trial: Trial, segments: Sequence[Segment], result: RoadResult) -> list[Warning_]:

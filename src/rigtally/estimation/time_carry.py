@@ -72,8 +72,8 @@ class Carrier:
     def tie_slopes(self, theta: Array, varying: list[int]) -> Array:
         """(varying, p): how the whole vector moves with each varying parameter, ties followed.
 
-        A tie is any expression, so its slope comes from the complex step where numpy follows it and from
-        central differences of the expression (not of the model) where it does not.
+        A tie is any expression in lmfit's syntax, so its slope is a central difference of the expression itself
+        (a line of arithmetic); the model's derivatives are exact.
         """
         out = np.zeros((len(varying), len(self.names)))
         for row, k in enumerate(varying):

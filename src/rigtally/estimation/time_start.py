@@ -164,7 +164,7 @@ def linear_denominators(trial: Trial, view: Segment, low: float, high: float, de
     found = []
     for rate in np.geomspace(low, high, max(round(2 * np.log10(high / low)), 3)):
         unit = 1.0 / rate
-        filter_ = np.poly(-np.ones(form.degree))[::-1]
+        filter_ = np.asarray(np.poly(-np.ones(form.degree))[::-1], dtype=np.float64)
         for _ in range(3):
             coefficients = _one_pass(
                 form, filter_, inputs, outputs, view.interval / unit, between, dead / unit
@@ -198,7 +198,7 @@ def _one_pass(
     with np.errstate(all="ignore"):
         y = powers(outputs, "ramped", 0.0)
         u = powers(inputs, between, dead) if inputs.shape[0] else np.zeros((0, n + 1, count))
-        free = flow(a, np.eye(n), interval * np.arange(count))[0]
+        free = flow(a, np.eye(n), interval * np.arange(count, dtype=np.float64))[0]
     own = np.concatenate([free, np.ones((1, count))])
     tables, rights = [], []
     for i in range(outputs.shape[0]):

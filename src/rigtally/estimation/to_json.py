@@ -59,7 +59,10 @@ def _response(fit: Fit) -> dict[str, Any] | None:
         return None
     q, r = found.gain.shape[1:]
     single = q == r == 1
-    pick = (lambda a: a[:, 0, 0]) if single else (lambda a: a)
+
+    def pick(rows: Any) -> Any:
+        return rows[:, 0, 0] if single else rows
+
     return {
         "frequency": found.frequency.tolist(),
         "gain": np.stack([pick(found.gain).real, pick(found.gain).imag], axis=-1).tolist(),

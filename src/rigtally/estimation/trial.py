@@ -59,7 +59,7 @@ class Segment:
         """(n,) sample times in seconds."""
         if self.stamps is not None:
             return self.stamps
-        return self.start + self.interval * np.arange(self.count)
+        return self.start + self.interval * np.arange(self.count, dtype=np.float64)
 
 
 @dataclass(frozen=True)

@@ -75,7 +75,7 @@ def registry() -> Any:
     """The one pint registry of the process."""
     import pint
 
-    units = pint.UnitRegistry(autoconvert_offset_to_baseunit=False)
+    units: Any = pint.UnitRegistry(autoconvert_offset_to_baseunit=False)
     units.formatter.default_format = "~"
     return units
 

@@ -151,7 +151,7 @@ class Record:
         """(n,) sample times in seconds."""
         if self.stamps is not None:
             return self.stamps
-        return self.start + self.interval * np.arange(self.count)
+        return self.start + self.interval * np.arange(self.count, dtype=np.float64)
 
     @property
     def names(self) -> tuple[str, ...]:

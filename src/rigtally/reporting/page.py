@@ -26,7 +26,7 @@ from rigtally.reporting.numbers import engineering, interval, percent, plain, qu
 from rigtally.reporting.plots import budget_plot, record_plot, response_plots
 from rigtally.reporting.record_plot import channels_plot
 from rigtally.reporting.words import CAUTION, change, spoken, verdict_sentence
-from rigtally.tallying.tally import Tally
+from rigtally.tallying.result import Tally
 
 MOST_TRACES = 4
 _LIBRARIES = ("numpy", "scipy", "lmfit", "pint", "pandas", "h5py", "sympy", "matplotlib")

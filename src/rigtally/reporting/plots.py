@@ -22,7 +22,12 @@ from rigtally.tallying.comparison import ResponseComparison
 Array = NDArray[np.float64]
 POINTS = 1500
 MEASURED, FITTED, PREDICTED, INPUT = "#7a8793", "#0b5cad", "#c2571a", "#5b8c3a"
-_STYLE = {"font.size": 9, "svg.fonttype": "none", "svg.hashsalt": "rigtally", "font.family": "sans-serif"}
+_STYLE: Any = {
+    "font.size": 9,
+    "svg.fonttype": "none",
+    "svg.hashsalt": "rigtally",
+    "font.family": "sans-serif",
+}
 
 
 def svg(figure: Figure) -> str:

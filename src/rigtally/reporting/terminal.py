@@ -15,7 +15,7 @@ from rigtally.records.inspection import Inspection
 from rigtally.records.record import Record
 from rigtally.reporting.numbers import engineering, interval, percent, plain, quantity
 from rigtally.reporting.words import CAUTION, change, spoken, verdict_sentence
-from rigtally.tallying.tally import Tally
+from rigtally.tallying.result import Tally
 
 _COLOUR = {"agrees": "green", "differs": "red", "undecided": "yellow"}
 
@@ -156,11 +156,11 @@ def show_inspection(found: Inspection, console: Console) -> None:
     rows = []
     for event in found.events:
         answers = []
-        for channel, features in event.responses.items():
+        for name, features in event.responses.items():
             some = [
                 f"{k.replace('_', ' ')} {quantity(q)}" for k, q in list(features.items())[:3] if q.determined
             ]
-            answers.append(f"{channel}: " + ", ".join(some))
+            answers.append(f"{name}: " + ", ".join(some))
         rows.append(
             [
                 str(event.number), event.kind, event.channel, quantity(event.start, unit=False),

@@ -6,7 +6,7 @@ import math
 
 from rigtally.reporting.numbers import percent
 from rigtally.tallying.explanation import Explanation
-from rigtally.tallying.tally import Tally
+from rigtally.tallying.result import Tally
 
 CAUTION = (
     "A result of this program does not replace a risk assessment. Rigs under pressure, with rotating parts or with "
