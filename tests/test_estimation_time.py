@@ -86,7 +86,7 @@ def monte_carlo(
 
 def test_white_noise_is_met_at_the_bound() -> None:
     """Pooled RMSE over the bound within Monte Carlo scatter of one; the 95 % interval covers as often as it says."""
-    errors, pulls, factors = monte_carlo(12, 0.0, 20, [c for c in CELLS if c[0] < 1])
+    errors, pulls, factors = monte_carlo(6, 0.0, 20, [c for c in CELLS if c[0] < 1])
     count = errors.size / 3
     ratio = np.sqrt(np.mean(errors**2, axis=(0, 1)))
     np.testing.assert_allclose(ratio, 1.0, atol=3.5 / np.sqrt(2 * count))
@@ -97,10 +97,10 @@ def test_white_noise_is_met_at_the_bound() -> None:
 
 def test_coloured_noise_is_found_and_paid_for() -> None:
     """Autoregressive noise (ρ = 0.9), nobody told: intervals cover, and the estimate stays near that noise's bound."""
-    errors, pulls, factors = monte_carlo(14, 0.9, 21, [(0.3, 40, "step"), (0.7, 40, "noise")])
-    assert np.sqrt(np.mean(errors**2)) < 1.15 * (1 + 2.5 / np.sqrt(2 * 28))
+    errors, pulls, factors = monte_carlo(10, 0.9, 21, [(0.3, 40, "step"), (0.7, 40, "noise")])
+    assert np.sqrt(np.mean(errors**2)) < 1.15 * (1 + 2.5 / np.sqrt(2 * 20))
     missed = int(np.sum(np.any(np.abs(pulls) > factors[:, :, None] * 1.4, axis=2)))
-    assert missed <= stats.binom.ppf(0.999, 28, 3 * 0.006)
+    assert missed <= stats.binom.ppf(0.999, 20, 3 * 0.006)
 
 
 def made(seed: int = 3, count: int = 1500, sigma: float = 0.02) -> tuple[np.ndarray, np.ndarray]:
@@ -297,7 +297,7 @@ def test_found_without_a_start() -> None:
 
     sys.modules["convergence"] = module
     spec.loader.exec_module(module)
-    for seed in range(14):
+    for seed in range(8):
         excess, _ = module.lost(module.random_record(seed, 1200), "time")
         assert excess <= 1e-6, f"seed {seed}"
 
