@@ -160,7 +160,7 @@ def test_inspect_says_what_is_in_the_log(tmp_path: Path, capsys: pytest.CaptureF
     assert document["schema"] == "rigtally/inspection/1"
     assert {c["name"]: c["unit"] for c in document["channels"]} == {"p_in": "Pa", "p_out": "Pa"}
     assert document["clock"]["interval"] == pytest.approx(1e-3, rel=1e-9)
-    assert document["events"][0]["start"] == pytest.approx(0.2, abs=0.002)
+    assert document["events"][0]["start"]["value"] == pytest.approx(0.2, abs=0.002)
     code, out, _ = call(capsys, "inspect", log)
     assert code == 0
     assert "rigtally fit" in out

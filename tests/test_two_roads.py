@@ -27,6 +27,8 @@ def reached(module: str) -> set[str]:
         if name in found:
             continue
         found.add(name)
+        if name in BEFORE_AND_AFTER:
+            continue
         for node in ast.walk(ast.parse((ESTIMATION / f"{name}.py").read_text(encoding="utf-8"))):
             if isinstance(node, ast.ImportFrom) and (node.module or "").startswith("rigtally.estimation"):
                 parts = (node.module or "").split(".")
