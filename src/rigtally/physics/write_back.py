@@ -1,0 +1,79 @@
+"""A rig file written back with other values: the user's own text, only the named values replaced."""
+
+from __future__ import annotations
+
+import math
+import re
+from collections.abc import Mapping
+from pathlib import Path
+
+from rigtally.files import write_whole
+from rigtally.physics.rig import Rig
+from rigtally.physics.rig_lines import find_lines
+from rigtally.quantities.uncertain import Uncertain
+from rigtally.quantities.units import unit
+
+_WRITTEN = re.compile(r"^\s*[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?\s*([^,±]*?)\s*(?:±|\+/-|,|$)(.*)$")
+
+
+def save_rig(rig: Rig, new_values: Mapping[str, Uncertain], path: str | Path) -> Path:
+    """Write the rig file with new values, each with its standard uncertainty in the unit that the file used.
+
+    Comments and everything else stay. Values without a place of their own in the file (the friction model of a
+    line, say) are left out.
+
+    Parameters
+    ----------
+    rig : Rig
+    new_values : value name ("gauge chamber.compliance") -> Uncertain, SI
+    path : the file to write; replaced at once or not at all
+    """
+    lines = rig.text.splitlines(keepends=True)
+    where = find_lines(rig.text)
+    places = {element.name: number for number, element in enumerate(rig.elements)}
+    for name, value in new_values.items():
+        if name not in rig.labels or not math.isfinite(value.value):
+            continue
+        owner, key = rig.labels[name]
+        for table, number, word in (
+            ("element", places.get(owner, -1), key),
+            (f"medium.{owner}", 0, key),
+            (f"value.{name}", 0, "value"),
+            ("rig", 0, key if owner == "rig" else ""),
+        ):
+            line = where.keys.get((table, number, word))
+            if line is not None:
+                lines[line - 1] = _replaced(lines[line - 1], word, value)
+                break
+    return write_whole(path, "".join(lines))
+
+
+def _replaced(line: str, key: str, value: Uncertain) -> str:
+    """The line with the quoted (or bare) value of its key replaced."""
+    quoted = re.compile(rf'^(\s*(?:"{key}"|{key})\s*=\s*)"([^"]*)"(.*)$', re.S)
+    found = quoted.match(line)
+    if found is None:
+        bare = re.match(rf"^(\s*{key}\s*=\s*)([^#\s]+)(.*)$", line, re.S)
+        return f'{bare.group(1)}"{_text(value, "")}"{bare.group(3)}' if bare else line
+    written = found.group(2)
+    if written.strip().startswith("="):
+        return line
+    return f'{found.group(1)}"{_text(value, written)}"{found.group(3)}'
+
+
+def _text(value: Uncertain, written: str) -> str:
+    """ "4.52e-12 m^3/Pa, u = 5.4e-14 m^3/Pa", in the unit of the written text."""
+    found = _WRITTEN.match(written)
+    word = found.group(1).strip() if found else ""
+    if not word and found:
+        # "4.00 ± 0.05 mm": the unit stands behind the tolerance
+        tail = re.match(r"^\s*[\d.eE+-]+\s*([^,%]*)", found.group(2))
+        word = tail.group(1).strip() if tail else ""
+    size = unit(word)
+    number = repr((value.value - size.offset) / size.factor)
+    reference = re.search(r",\s*(absolute|gauge)", written)
+    out = f"{number} {word}".strip()
+    if math.isfinite(value.u) and value.u > 0:
+        own = "K" if size.offset else word
+        out += f", u = {value.u / (1.0 if size.offset else size.factor):.4g} {own}".rstrip()
+    return out + (f", {reference.group(1)}" if reference else "")
