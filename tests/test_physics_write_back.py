@@ -24,7 +24,7 @@ def test_every_value_of_a_starter_is_written_back(kind: str, tmp_path: Path) -> 
     moved = {
         name: Uncertain(q.value * 1.01, abs(q.value) * 0.002, q.unit)
         for name, q in rig.values.items()
-        if not (name == "rig.gravity" or q.distribution == "exact" and name not in rig.labels)
+        if not (name == "rig.gravity" or (q.distribution == "exact" and name not in rig.labels))
     }
     new = load_rig(save_rig(rig, moved, tmp_path / "new.toml"))
     for name, q in moved.items():

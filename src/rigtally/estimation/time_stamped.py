@@ -36,7 +36,8 @@ def irregular_states(
     else:
         values = np.array([np.interp(union, knots, row) for row in u])
         rates = np.diff(values, axis=1) / durations
-    distinct, which = np.unique(np.round(durations.astype(np.float64), 15), return_inverse=True)
+    rounded = np.asarray(np.round(durations, 15), dtype=np.float64)
+    distinct, which = np.unique(rounded, return_inverse=True)
     phi = (
         exponentials(block, distinct)[which]
         if distinct.size < durations.size
