@@ -13,8 +13,12 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from rigtally.estimation.fit import fit as fit
+    from rigtally.estimation.measured_response import response as response
     from rigtally.physics.prediction import predict as predict
     from rigtally.physics.rig_file import load_rig as load_rig
+    from rigtally.planning.plan import plan as plan
+    from rigtally.rating.correction import correct as correct
+    from rigtally.rating.rating import rate as rate
     from rigtally.records.read import read as read
     from rigtally.reporting.page import report as report
     from rigtally.tallying.tally import tally as tally
@@ -30,6 +34,10 @@ _PUBLIC = {
     "predict": ("rigtally.physics.prediction", "predict"),
     "read": ("rigtally.records.read", "read"),
     "report": ("rigtally.reporting.page", "report"),
+    "plan": ("rigtally.planning.plan", "plan"),
+    "rate": ("rigtally.rating.rating", "rate"),
+    "correct": ("rigtally.rating.correction", "correct"),
+    "response": ("rigtally.estimation.measured_response", "response"),
     "tally": ("rigtally.tallying.tally", "tally"),
 }
 

@@ -19,11 +19,11 @@ LAGS = 24
 
 
 def lag_one(residual: Array) -> float:
-    """Autocorrelation of a residual at lag one (NaN samples left out)."""
+    """Correlation of a residual's samples with their neighbours (NaN samples left out)."""
     r = residual[np.isfinite(residual)]
-    r = r - r.mean()
-    power = float(r @ r)
-    return float(r[1:] @ r[:-1] / power) if power > 0 else math.nan
+    if r.size < 3 or np.ptp(r[1:]) == 0.0 or np.ptp(r[:-1]) == 0.0:
+        return math.nan
+    return float(np.corrcoef(r[1:], r[:-1])[0, 1])
 
 
 def slow_residual(residual: Array, effective: float) -> bool:

@@ -26,6 +26,7 @@ _ROADS = {
     "time": ("rigtally.estimation.time_domain", "fit_time"),
     "frequency": ("rigtally.estimation.frequency_domain", "fit_frequency"),
 }
+LONG = 50_000  # samples beyond which the time road checks from where the frequency road ended
 _OTHER = {"time": "frequency", "frequency": "time"}
 
 
@@ -227,9 +228,11 @@ def _first_road(trial: Trial, road: str) -> tuple[RoadResult, str, list[Warning_
 
 
 def _second_road(trial: Trial, road: str, first: RoadResult) -> tuple[RoadResult | None, list[Warning_]]:
-    """The other road as a check, from its own start."""
+    """The other road as a check: from its own start, or on a very long record from where the first one ended."""
+    long = sum(segment.count for segment in trial.segments) > LONG
+    near = {"start": first.theta} if road == "time" and long and np.all(np.isfinite(first.theta)) else {}
     try:
-        return _take(road, trial), []
+        return _take(road, trial, **near), []
     except FitError as refusal:
         if refusal.code == "road-unfit":
             return None, []

@@ -16,8 +16,9 @@ from collections.abc import Sequence
 from itertools import pairwise
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
+from rigtally.errors import LogError
 from rigtally.estimation.result import MeasuredResponse
 from rigtally.estimation.trial import Segment
 from rigtally.forms.transfer_matrix import TransferMatrix
@@ -87,3 +88,79 @@ def _bands(bins: int, narrowest: int) -> list[int]:
     while edges[-1] < bins - 1:
         edges.append(min(max(round(edges[-1] * ratio), edges[-1] + narrowest), bins))
     return edges
+
+
+def response(input: ArrayLike, output: ArrayLike, interval: float, segments: int = 32) -> MeasuredResponse:
+    """The frequency response of a long, steadily moving record without any form: H1 by averaged windows.
+
+    The record is cut into half-overlapping Hann windows (Welch, IEEE Trans. Audio Electroacoust. 15 (1967) 70, from
+    memory), cross-spectra are averaged over windows and over bands of neighbouring bins. For a single step use
+    `fit`, whose `response` takes the record's ends into account.
+
+    Parameters
+    ----------
+    input, output : (n,) or (channels, n) arrays, SI, without gaps
+    interval : float, s
+    segments : int
+        Length of a window = n / segments.
+
+    Returns
+    -------
+    MeasuredResponse
+        frequency (m,) rad/s, gain and u (m, outputs, inputs), coherence (m,)
+
+    Raises
+    ------
+    LogError
+        code "no-response": too short, with gaps, or an input that does not move.
+    """
+    u = np.atleast_2d(np.asarray(input, dtype=float))
+    y = np.atleast_2d(np.asarray(output, dtype=float))
+    length = u.shape[1] // max(segments, 1)
+    complete = u.shape[1] == y.shape[1] and np.all(np.isfinite(u)) and np.all(np.isfinite(y))
+    if not complete or length < 64 or np.any(np.ptp(u, axis=1) == 0.0):
+        raise LogError(
+            "no frequency response can be measured from this record",
+            do=f"use complete channels of at least {64 * segments} samples, and inputs that move",
+            code="no-response",
+        )
+    window = np.hanning(length)
+    starts = range(0, u.shape[1] - length + 1, length // 2)
+
+    def spectra(rows: Array) -> NDArray[np.complex128]:
+        cut = np.array([rows[:, k : k + length] for k in starts])
+        cut = cut - cut.mean(axis=2, keepdims=True)
+        return np.fft.rfft(cut * window, axis=2)[:, :, 1:]
+
+    su, sy = spectra(u), spectra(y)
+    # of windows that overlap by half, 0.95 are independent; of a Hann window's bins, two thirds
+    worth = 0.95 * 2.0 / 3.0
+    rows = []
+    for begin, end in pairwise(_bands(su.shape[2] + 1, 3)):
+        found = _band_response(su[:, :, begin - 1 : end - 1], sy[:, :, begin - 1 : end - 1], worth)
+        if found is not None:
+            rows.append((2 * np.pi * 0.5 * (begin + end - 1) / (length * interval), *found))
+    frequency, gain, size, coherence = zip(*rows, strict=True)
+    return MeasuredResponse(np.array(frequency), np.array(gain), np.array(size), np.array(coherence))
+
+
+def _band_response(
+    su: NDArray[np.complex128], sy: NDArray[np.complex128], worth: float
+) -> tuple[NDArray[np.complex128], Array, float] | None:
+    """Gain (q, r), its u, and the least coherence of one band; None where the inputs move together."""
+    r, q = su.shape[1], sy.shape[1]
+    x = su.transpose(1, 0, 2).reshape(r, -1)
+    z = sy.transpose(1, 0, 2).reshape(q, -1)
+    power = x @ x.conj().T
+    scale = np.sqrt(np.real(np.diag(power)))
+    if np.any(scale == 0) or np.linalg.cond(power / np.outer(scale, scale)) > 1e8:
+        return None
+    inverse = np.linalg.inv(power)
+    gain = z @ x.conj().T @ inverse
+    left = np.sum(np.abs(z - gain @ x) ** 2, axis=1)
+    total = np.sum(np.abs(z) ** 2, axis=1)
+    free = max(worth * x.shape[1] - r, 1.0)
+    noise = left / x.shape[1] * (worth * x.shape[1] / free)
+    spread = np.real(np.diag(inverse)) / worth
+    share = np.where(total > 0, left / np.where(total > 0, total, 1.0), 1.0)
+    return gain, np.sqrt(0.5 * np.outer(noise, spread)), float(np.min(1.0 - share))
