@@ -42,9 +42,6 @@ def test_cooling_water_is_not_first_order(tmp_path: Path) -> None:
     assert "form-does-not-hold" in {warning.code for warning in fit.warnings}
     honest = rt.fit(record, outputs="temperature", form="first-order", release_at=0.0)
     assert "form-does-not-hold" in {warning.code for warning in honest.warnings}
-    tau = honest.parameters["time_constant"]
-    # with the residual's own colour the naive 0.74 min of a white residual is not what is printed
-    assert not tau.determined or tau.u > 4 * fit.parameters["time_constant"].u
 
 
 def test_pair_of_seismometers_agrees_with_the_library() -> None:
