@@ -57,7 +57,10 @@ def write_csv(path: Path, test: Test, seed: int, heading: list[str]) -> None:
     digits = 4 if abs(interval * 1e4 - round(interval * 1e4)) < 1e-6 else 5
     places = [max(0, int(np.ceil(-np.log10(CHANNELS[name][3])))) for name in rows]
     for k, t in enumerate(test.time):
-        cells = [f"{t:.{digits}f}", *(f"{column[k]:.{p}f}" for column, p in zip(rows.values(), places, strict=True))]
+        cells = [
+            f"{t:.{digits}f}",
+            *(f"{column[k]:.{p}f}" for column, p in zip(rows.values(), places, strict=True)),
+        ]
         lines.append(",".join(cells))
     path.write_text("\n".join(lines) + "\n", encoding="utf-8")
 
