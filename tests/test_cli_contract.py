@@ -9,6 +9,7 @@ import numpy as np
 import pytest
 
 from rigtally.cli.main import run
+from test_estimation_certified import BOXBOD, MISRA
 
 SAMPLES = Path(__file__).parents[1] / "sample_data"
 
@@ -196,3 +197,31 @@ def test_the_refilled_line_does_not_tally(capsys: pytest.CaptureFixture[str]) ->
     assert document["agreement"]["verdict"] == "differs"
     first = document["explanations"][0]
     assert any("compliance" in name for name in [*first["elements"], *first["indistinguishable"]])
+
+
+@pytest.mark.parametrize(
+    ("stamps", "values", "gain", "u_gain", "rate", "u_rate"),
+    [
+        # BoxBOD: oxygen demand (mg/L) against days, measured
+        (BOXBOD[0], BOXBOD[1], 2.1380940889e2, 1.2354515176e1, 5.4723748542e-1, 1.0455993237e-1),
+        # Misra1a: volume against pressure, measured; the pressure is read as time, for the arithmetic only
+        (MISRA[0], MISRA[1], 2.3894212918e2, 2.7070075241, 5.5015643181e-4, 7.2668688436e-6),
+    ],
+    ids=["BoxBOD", "Misra1a"],
+)
+def test_certified_responses_through_the_command_line(
+    stamps: list[float], values: list[float], gain: float, u_gain: float, rate: float, u_rate: float,
+    tmp_path: Path, capsys: pytest.CaptureFixture[str],
+) -> None:  # fmt: skip
+    """NIST's certified gain, rate and standard deviations (Statistical Reference Datasets, public domain, opened)."""
+    log = tmp_path / "certified.csv"
+    log.write_text("t [s],y\n" + "".join(f"{t},{y}\n" for t, y in zip(stamps, values, strict=True)))
+    assumed = ["--step-at", "0", "--offset", "0", "--drift", "none", "--start", "rest", "--noise", "white"]
+    code, out, _ = call(capsys, "fit", log, "--output", "y", "--form", "first-order", *assumed, "--json")
+    assert code == 0
+    found = json.loads(out)["parameters"]
+    tau = found["time_constant"]
+    assert found["gain"]["value"] == pytest.approx(gain, rel=2e-6)
+    assert found["gain"]["u"] == pytest.approx(u_gain, rel=2e-5)
+    assert 1 / tau["value"] == pytest.approx(rate, rel=2e-6)
+    assert tau["u"] / tau["value"] ** 2 == pytest.approx(u_rate, rel=2e-5)
