@@ -12,7 +12,7 @@ import sys
 from collections.abc import Callable
 from pathlib import Path
 
-from make_sample_data import logged, preamble, write_csv
+from make_sample_data import preamble, write_semicolons
 from rigtally import load_rig
 from sample_rigs import IMPULSE_LINE, RATE_CAPSULE, WINCH_MOTOR, Test, impulse_line, rate_capsule, winch_motor
 
@@ -41,12 +41,12 @@ def make(target: Path, steps: float = STEPS) -> list[Path]:
         path = target / folder / f"{name.replace(' ', '_').replace('.', '-')}.csv"
         path.parent.mkdir(parents=True, exist_ok=True)
         test = shifted(folder, name, steps)
-        write_csv(path, test, 500 + number, preamble(folder, f"{name} off by {steps:g} u", number))
+        write_semicolons(path, test, 500 + number, preamble(folder, f"{name} off by {steps:g} u", number))
         out.append(path)
     return out
 
 
-__all__ = ["CASES", "RIGS", "SAMPLES", "STEPS", "logged", "make", "shifted"]
+__all__ = ["CASES", "RIGS", "SAMPLES", "STEPS", "make", "shifted"]
 
 
 if __name__ == "__main__":

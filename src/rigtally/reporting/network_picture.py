@@ -1,130 +1,181 @@
-"""The rig as plain boxes and lines: nodes as dots with their names, elements as boxes with name and value."""
+"""The rig as plain lines and boxes: a vertical line for each node, a row for each element between its nodes.
+
+Nothing can overlap, whatever the network: the boxes stand between the node lines, one below the other.
+"""
 
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
+from dataclasses import dataclass
 
-import numpy as np
+from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.patches import FancyBboxPatch
-from numpy.typing import NDArray
 
-from rigtally.physics.rig import GROUND, Rig
+from rigtally.physics.rig import GROUND, Element, Rig
 from rigtally.reporting.numbers import engineering
 from rigtally.reporting.plots import svg
 
-Array = NDArray[np.float64]
-MOST_ELEMENTS = 40
+MOST_ELEMENTS, MOST_NODES = 40, 12
+GAP = 2.0  # inches between node lines
+BOX = 1.6
+LINE = 0.17  # inches between connections on one side of a box
+NODE, WIRE, EARTH, DRIVEN, READ = "#0b5cad", "#55606b", "#333333", "#3f6b26", "#a8480f"
+_OF_MEDIUM = ("density", "viscosity", "bulk_modulus", "temperature", "static_pressure")
+
+
+@dataclass(frozen=True)
+class _Row:
+    """A box with its words and the node columns that it is connected to (with a small word at each)."""
+
+    name: str
+    detail: str
+    ends: tuple[tuple[int, str], ...]
+    colour: str = EARTH
+    framed: bool = True
+
+    @property
+    def gap(self) -> int:
+        """The gap between node lines in which the box stands: right of its leftmost node."""
+        return min(column for column, _ in self.ends)
+
+    def side(self, left: bool) -> list[tuple[int, str]]:
+        """Connections that leave on one side, in their order."""
+        return [end for end in self.ends if (end[0] <= self.gap) is left]
+
+    @property
+    def height(self) -> float:
+        """Inches."""
+        return max(0.40, LINE * (1 + max(len(self.side(True)), len(self.side(False)))))
 
 
 def network_picture(rig: Rig) -> str:
     """SVG of the network, or "" where there is nothing to draw or it would not be readable."""
-    if not rig.elements or len(rig.elements) > MOST_ELEMENTS:
+    nodes = _ordered(rig)
+    if not rig.elements or len(rig.elements) > MOST_ELEMENTS or len(nodes) > MOST_NODES:
         return ""
-    nodes = sorted({n for e in rig.elements for p in e.ports for n in (p.first, p.second)} - {GROUND})
-    levels = _levels(rig, nodes)
-    columns = max(levels.values(), default=0) + 1
-    place = _places(levels)
-    figure = Figure(figsize=(8.6, 2.2 + 0.9 * max(_stack(place), 1)), layout="constrained")
-    axis = figure.subplots()
+    column = {name: k for k, name in enumerate([*nodes, GROUND])}
+    rows = [*_imposed(rig, column), *(_element(rig, e, column) for e in rig.elements), *_read(rig, column)]
+    grounded = any(column[GROUND] in {c for c, _ in row.ends} for row in rows)
+    width = max(8.6, GAP * (len(nodes) - (0 if grounded else 1)) + 1.4)
+    depth = sum(row.height + 0.16 for row in rows)
+    figure = Figure(figsize=(width, depth + 0.6))
+    axis = figure.add_axes((0.0, 0.0, 1.0, 1.0))
     axis.set_axis_off()
-    used: dict[tuple[float, float], int] = {}
-    lowest = min((y for _, y in place.values()), default=0.0) - 1.6
-    for element in rig.elements:
-        ends = [_end(port.first, port.second, place) for port in element.ports]
-        points = [p for pair in ends for p in pair]
-        if not points:
+    extent = GAP * (len(nodes) if grounded else len(nodes) - 1)
+    axis.set_xlim(extent / 2 - width / 2, extent / 2 + width / 2)
+    axis.set_ylim(-depth - 0.2, 0.4)
+    for name, k in column.items():
+        if name == GROUND and not grounded:
             continue
-        middle = np.mean(points, axis=0)
-        if any(GROUND in (port.first, port.second) for port in element.ports) and len(points) == 1:
-            middle = np.array([points[0][0], lowest + 0.75])
-        key = (round(float(middle[0]), 1), round(float(middle[1]), 1))
-        count = used.get(key, 0)
-        used[key] = count + 1
-        middle = (
-            middle + np.array([0.0, 0.62 * count])
-            if len(points) > 1
-            else middle + np.array([0.62 * count, 0.0])
+        colour = EARTH if name == GROUND else NODE
+        axis.plot(
+            [GAP * k] * 2, [-depth, 0.0], color=colour, linewidth=3.0 if name == GROUND else 1.6, zorder=1
         )
-        for point in points:
-            axis.plot([point[0], middle[0]], [point[1], middle[1]], color="#7a8793", linewidth=1.0, zorder=1)
-        if len(points) < 2 * len(ends):
-            axis.plot([middle[0], middle[0]], [middle[1], lowest], color="#7a8793", linewidth=1.0, zorder=1)
-        _box(axis, middle, element.name, _value(rig, element.values))
-    axis.plot([-0.5, columns - 0.5], [lowest, lowest], color="#333333", linewidth=1.6)
-    axis.text(columns - 0.5, lowest - 0.12, "ground", ha="right", va="top", fontsize=8, color="#333333")
-    for name, (x, y) in place.items():
-        axis.plot([x], [y], "o", color="#0b5cad", markersize=6, zorder=3)
-        axis.text(x, y + 0.14, name, ha="center", va="bottom", fontsize=8, color="#0b5cad", zorder=4)
-    for drive in rig.drives:
-        if drive.port.first in place:
-            x, y = place[drive.port.first]
-            axis.annotate(
-                drive.name, (x, y), (x - 0.1, y + 0.75), fontsize=8, color="#5b8c3a", ha="center",
-                arrowprops={"arrowstyle": "->", "color": "#5b8c3a"},
-            )  # fmt: skip
-    axis.margins(0.08, 0.12)
+        axis.text(GAP * k, 0.08, name, ha="center", va="bottom", fontsize=9, color=colour, fontweight="bold")
+    y = 0.0
+    for row in rows:
+        _draw(axis, row, y - 0.08 - row.height / 2)
+        y -= row.height + 0.16
     return svg(figure)
 
 
-def _levels(rig: Rig, nodes: list[str]) -> dict[str, int]:
-    """Steps of each node from the drives, breadth first."""
-    starts = [d.port.first for d in rig.drives if d.port.first in nodes] or nodes[:1]
-    level = {starts[0]: 0} if starts else {}
-    waiting = list(level)
-    while waiting or len(level) < len(nodes):
-        if not waiting:
-            rest = next(n for n in nodes if n not in level)
-            level[rest] = max(level.values(), default=-1) + 1
-            waiting = [rest]
-        here = waiting.pop(0)
-        for element in rig.elements:
-            around = {n for p in element.ports for n in (p.first, p.second)} - {GROUND}
-            if here in around:
-                for other in sorted(around - level.keys()):
-                    level[other] = level[here] + 1
-                    waiting.append(other)
-    return level
-
-
-def _places(levels: dict[str, int]) -> dict[str, tuple[float, float]]:
-    rows: dict[int, int] = {}
-    out = {}
-    for name, level in levels.items():
-        row = rows.get(level, 0)
-        rows[level] = row + 1
-        out[name] = (1.6 * level, 1.4 * row)
-    return out
-
-
-def _stack(place: dict[str, tuple[float, float]]) -> int:
-    return len({y for _, y in place.values()})
-
-
-def _end(first: str, second: str, place: dict[str, tuple[float, float]]) -> list[Array]:
-    return [np.array(place[n]) for n in (first, second) if n != GROUND and n in place]
-
-
-def _value(rig: Rig, values: object) -> str:
-    """The first values of an element, with units."""
-    out = []
-    for key, name in list(dict(values).items())[:2]:  # type: ignore[call-overload]
-        if name in rig.values and key not in ("density", "viscosity", "bulk_modulus"):
-            quantity = rig.values[name]
-            if math.isfinite(quantity.value):
-                out.append(engineering(quantity.value, quantity.unit))
-    return ", ".join(out)
-
-
-def _box(axis: object, middle: Array, name: str, value: str) -> None:
-    width = 0.062 * max(len(name), len(value), 8) + 0.12
-    axis.add_patch(  # type: ignore[attr-defined]
-        FancyBboxPatch(
-            (middle[0] - width / 2, middle[1] - 0.2), width, 0.4, boxstyle="round,pad=0.02", facecolor="white",
-            edgecolor="#333333", linewidth=1.0, zorder=5,
-        )
-    )  # fmt: skip
-    axis.text(middle[0], middle[1] + 0.075, name, ha="center", va="center", fontsize=8, zorder=6)  # type: ignore[attr-defined]
-    axis.text(  # type: ignore[attr-defined]
-        middle[0], middle[1] - 0.1, value, ha="center", va="center", fontsize=7, color="#555555", zorder=6
+def _draw(axis: Axes, row: _Row, y: float) -> None:
+    """One row about the height y."""
+    x = GAP * (row.gap + 0.5)
+    for left in (True, False):
+        ends = row.side(left)
+        edge = x - BOX / 2 if left else x + BOX / 2
+        for k, (node, word) in enumerate(ends):
+            at = y + LINE * ((len(ends) - 1) / 2 - k)
+            axis.plot([edge, GAP * node], [at, at], color=row.colour, linewidth=1.0, zorder=2)
+            axis.plot([GAP * node], [at], "o", color=row.colour, markersize=4.5, zorder=4)
+            if word and not left:
+                axis.text(
+                    edge + 0.06, at + 0.015, word, fontsize=6, color=WIRE, ha="left", va="bottom", zorder=4
+                )
+    if row.framed:
+        axis.add_patch(
+            FancyBboxPatch(
+                (x - BOX / 2 + 0.03, y - row.height / 2 + 0.03), BOX - 0.06, row.height - 0.06,
+                boxstyle="round,pad=0.03", facecolor="white", edgecolor=row.colour, linewidth=1.0, zorder=3,
+            )
+        )  # fmt: skip
+    shift = 0.075 if row.detail else 0.0
+    axis.text(
+        x, y + shift, _short(row.name), ha="center", va="center", fontsize=8, color=row.colour, zorder=5
     )
+    axis.text(
+        x, y - 0.085, _short(row.detail, 32), ha="center", va="center", fontsize=6.5, color=WIRE, zorder=5
+    )
+
+
+def _short(text: str, most: int = 25) -> str:
+    return text if len(text) <= most else text[: most - 1] + "…"
+
+
+def _element(rig: Rig, element: Element, column: dict[str, int]) -> _Row:
+    words = [""] if len(element.ports) == 1 else ["prim", "sec"]
+    ends = [
+        (column[node], word)
+        for port, word in zip(element.ports, words, strict=True)
+        for node in (port.first, port.second)
+    ]
+    return _Row(element.name, _value(rig, element), tuple(ends))
+
+
+def _imposed(rig: Rig, column: dict[str, int]) -> list[_Row]:
+    """What is imposed on the rig, with its channel."""
+    return [
+        _Row(d.name, f"imposed {d.imposes}", _port(d.port.first, d.port.second, column), DRIVEN)
+        for d in rig.drives
+    ]
+
+
+def _read(rig: Rig, column: dict[str, int]) -> list[_Row]:
+    """What is read: across a pair of nodes, or through an element (at the nodes of its first port)."""
+    rows = []
+    for reading in rig.readings:
+        detail, port = f"read {reading.of}", reading.port
+        if port is None:
+            detail += f" through {reading.through}"
+            port = next(e.ports[0] for e in rig.elements if e.name == reading.through)
+        if reading.port is None:
+            rows.append(
+                _Row(reading.name, detail, ((min(column[port.first], column[port.second]), ""),), READ, False)
+            )
+        else:
+            rows.append(_Row(reading.name, detail, _port(port.first, port.second, column), READ))
+    return rows
+
+
+def _port(first: str, second: str, column: dict[str, int]) -> tuple[tuple[int, str], ...]:
+    return ((column[first], ""), (column[second], ""))
+
+
+def _value(rig: Rig, element: Element) -> str:
+    """The first values of an element, with units; those of its medium stand in the tables."""
+    shown = []
+    for key, name in element.values.items():
+        value = rig.values.get(name)
+        if value is not None and key not in _OF_MEDIUM and math.isfinite(value.value):
+            shown.append(engineering(value.value, value.unit))
+    return ", ".join(shown[:2])
+
+
+def _ordered(rig: Rig) -> Sequence[str]:
+    """The nodes from the drives onwards, breadth first, without the ground."""
+    ports = [[n for p in e.ports for n in (p.first, p.second) if n != GROUND] for e in rig.elements]
+    every = list(dict.fromkeys(n for around in ports for n in around))
+    driven = [n for d in rig.drives for n in (d.port.first, d.port.second) if n in every]
+    out: list[str] = []
+    for start in dict.fromkeys([*driven[:1], *every]):
+        waiting = [start]
+        while waiting:
+            here = waiting.pop(0)
+            if here in out:
+                continue
+            out.append(here)
+            waiting += [n for around in ports if here in around for n in around if n not in out]
+    return out

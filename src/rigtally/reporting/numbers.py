@@ -52,7 +52,7 @@ def quantity(q: Uncertain, *, unit: bool = True) -> str:
         return f"{plain(q.value)}{tail} (exact)"
     size = max(abs(q.value), q.u)
     power = math.floor(math.log10(size)) if size > 0 else 0
-    if -4 <= power < 6:
+    if -3 <= power < 6:
         value, u = rounded(q.value, q.u)
         return f"{value} ± {u}{tail}"
     value, u = rounded(q.value / 10.0**power, q.u / 10.0**power)

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import io
 import math
+import textwrap
 from collections.abc import Sequence
 from typing import Any
 
@@ -72,8 +73,8 @@ def record_plot(fit: Fit, trace: Trace) -> str:
     """Inputs, outputs with the fit, and what is left over, of one segment."""
     q, r = len(fit.form.outputs), len(fit.form.inputs)
     figure, axes = _figure(
-        r + 2 * q, 1, 8.6, 1.2 * r + 2.6 * q, sharex=True,
-        gridspec_kw={"height_ratios": [0.7] * r + [2.0, 0.8] * q},
+        r + 2 * q, 1, 8.6, 1.15 * r + 2.6 * q, sharex=True,
+        gridspec_kw={"height_ratios": [1.0] * r + [2.0, 0.8] * q},
     )  # fmt: skip
     rows = axes[:, 0]
     for j in range(r):
@@ -93,7 +94,7 @@ def record_plot(fit: Fit, trace: Trace) -> str:
 
 
 def _label(name: str, unit: str) -> str:
-    short = name if len(name) < 18 else name[:16] + "…"
+    short = name if len(name) <= 12 else "\n".join(textwrap.wrap(name, 12)[:2])
     return f"{short}\n({unit})" if unit else short
 
 
@@ -157,12 +158,17 @@ def _band(axis: Axes, x: Array, y: Array, half: Array, colour: str, word: str) -
 
 
 def _measured(magnitude: Axes, phase: Axes, fit: Fit, i: int, j: int) -> None:
-    """The record's own response where it is worth showing (u below half of it)."""
+    """The record's own response where it is worth showing: where the fit stands clear of its u.
+
+    The choice looks at the fit and not at the measured gain, so that it does not prefer what chance made large.
+    """
     found = fit.response
     if found is None:
         return
     size, u = np.abs(found.gain[:, i, j]), found.u[:, i, j]
-    good = (u < 0.3 * size) & (size > 0)
+    clear = np.abs(fit.transfer_function(found.frequency)).reshape(size.shape[0], -1)
+    clear = clear[:, i * len(fit.form.inputs) + j]
+    good = (u < 0.3 * clear) & (size > 0)
     if not np.any(good):
         return
     hertz = found.frequency[good] / (2 * math.pi)

@@ -14,7 +14,7 @@ from rigtally.physics.prediction_result import Prediction
 from rigtally.records.inspection import Inspection
 from rigtally.records.record import Record
 from rigtally.reporting.numbers import engineering, interval, percent, plain, quantity
-from rigtally.reporting.words import CAUTION, change, spoken, verdict_sentence
+from rigtally.reporting.words import CAUTION, change, decided, spoken, verdict_sentence
 from rigtally.tallying.result import Tally
 
 _COLOUR = {"agrees": "green", "differs": "red", "undecided": "yellow"}
@@ -123,7 +123,7 @@ def show_tally(tally: Tally, console: Console) -> None:
             console,
         )
     for decision in (*tally.within, *tally.limits):
-        console.print(escape(str(decision.to_dict())), soft_wrap=True)
+        console.print(escape(decided(decision)), soft_wrap=True)
     _residuals(tally.fit, console)
     _warnings((*tally.fit.warnings, *tally.prediction.warnings, *tally.warnings), console)
     console.print(f"[dim]{escape(CAUTION)}[/]", soft_wrap=True)

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import math
 
-from rigtally.reporting.numbers import percent
+from rigtally.reporting.numbers import percent, plain, quantity
+from rigtally.tallying.decision import Decision
 from rigtally.tallying.explanation import Explanation
 from rigtally.tallying.result import Tally
 
@@ -41,7 +42,19 @@ def verdict_sentence(tally: Tally) -> str:
         "differs": "Bench and model differ.",
         "undecided": "Undecided: the comparison cannot tell.",
     }[tally.verdict]
-    return f"{head} {tally.reason}" if tally.reason else head
+    reason = tally.reason[:1].upper() + tally.reason[1:].rstrip(".")
+    return f"{head} {reason}." if reason else head
+
+
+def decided(decision: Decision) -> str:
+    """A decision against limits in one sentence."""
+    word = {True: "accepted", False: "rejected", None: "not determined"}[decision.accepted]
+    low = "−∞" if decision.lower is None else plain(decision.lower)
+    high = "∞" if decision.upper is None else plain(decision.upper)
+    return (
+        f"{spoken(decision.name)}: {quantity(decision.quantity)} against {low} to {high} ({decision.rule} rule): "
+        f"{word}, probability of conformity {percent(decision.conformity)}"
+    )
 
 
 def change(explanation: Explanation) -> str:
