@@ -129,7 +129,6 @@ PROPERTY_UNITS = {
     "viscosity": "Pa*s",
     "bulk_modulus": "Pa",
     "temperature": "K",
-    "heat_capacity_ratio": "",
 }
 
 DOMAIN_OF = {

@@ -50,9 +50,9 @@ class Parts:
                 )
         for name, entry in self.stated.items():
             self.source.only_keys(entry, _MEDIUM_KEYS, table=f"medium.{name}")
-            for key, unit in PROPERTY_UNITS.items():
+            for key in PROPERTY_UNITS:
                 if key in entry and not self._is_shared(entry[key]):
-                    self.source.quantity(entry[key], unit, table=f"medium.{name}", key=key)
+                    self._property(f"medium.{name}", key, entry[key])
             if "gas" in entry:
                 self.source.one_of(
                     str(entry["gas"]), GASES, table=f"medium.{name}", key="gas", code="unknown-gas"
@@ -63,6 +63,11 @@ class Parts:
                     code="unknown-process",
                 )  # fmt: skip
         for name, entry in self.shared.items():
+            if "." in name:
+                raise self.source.fault(
+                    f"the value's name {name!r} has a point in it", table=f"value.{name}",
+                    do="write it with _ instead", code="bad-name",
+                )  # fmt: skip
             self.source.only_keys(entry, ("value",), table=f"value.{name}")
             if "value" not in entry:
                 raise self.source.fault(
@@ -78,7 +83,7 @@ class Parts:
         """Every [[element]] of the file, checked one by one."""
         out: list[Element] = []
         entries = self.source.tree.get("element", [])
-        if not isinstance(entries, list):
+        if not isinstance(entries, list) or not all(isinstance(entry, dict) for entry in entries):
             raise self.source.fault(
                 "element is not a list of tables", table="element", do="write [[element]]", code="bad-table"
             )
@@ -163,7 +168,12 @@ class Parts:
                     "at stands beside from or to", key="at", code="bad-place",
                     do="at is short for from = …, to = ground; use one", **at,
                 )  # fmt: skip
-            return (Port(self._node(entry["at"], "at", at)),)
+            node = self._node(entry["at"], "at", at)
+            if node == GROUND:
+                raise self.source.fault(
+                    "at is ground", key="at", do="name a node of the rig", code="same-node", **at
+                )
+            return (Port(node),)
         first = self._node(entry.get("from"), "from", at)
         second = self._node(entry.get("to"), "to", at)
         return self._one_port(first, second, kind, at)
@@ -220,14 +230,8 @@ class Parts:
         return self.keep(f"{owner}.{key}", found, owner, key)
 
     def _shared(self, name: str, unit: str, key: str, positive: bool, at: dict[str, Any]) -> str:
-        if name not in self.shared:
-            raise self.source.fault(
-                f'{key} = "= {name}" names no [value.{name}]', key=key, do=nearest(name, list(self.shared))
-                if self.shared else f"write [value.{name}] with value = …", code="unknown-value", **at,
-            )  # fmt: skip
-        self.used.add(name)
-        written = self.shared[name]["value"]
-        found = self.source.quantity(written, unit, table=f"value.{name}", key="value", positive=positive)
+        """Name of a shared value, now one of the rig's."""
+        found = self._resolved(name, unit, key, positive, at)
         before = self.values.get(name)
         if before is not None and not same_dimension(before.unit, found.unit):
             raise self.source.fault(
@@ -235,6 +239,24 @@ class Parts:
                 do="give it a value of its own", code="wrong-unit", **at,
             )  # fmt: skip
         return self.keep(name, found, name, "value")
+
+    def _resolved(self, name: str, unit: str, key: str, positive: bool, at: dict[str, Any]) -> Uncertain:
+        """The quantity of a [value.x]."""
+        if name not in self.shared:
+            raise self.source.fault(
+                f'{key} = "= {name}" names no [value.{name}]', key=key, do=nearest(name, list(self.shared))
+                if self.shared else f"write [value.{name}] with value = …", code="unknown-value", **at,
+            )  # fmt: skip
+        self.used.add(name)
+        written = self.shared[name]["value"]
+        return self.source.quantity(written, unit, table=f"value.{name}", key="value", positive=positive)
+
+    def _property(self, table: str, prop: str, written: Any) -> Uncertain:
+        """A property as a medium's table states it, its own or a shared value."""
+        if self._is_shared(written):
+            name = written.strip()[1:].strip()
+            return self._resolved(name, PROPERTY_UNITS[prop], prop, True, {"table": table})
+        return self.source.quantity(written, PROPERTY_UNITS[prop], table=table, key=prop)
 
     def use_medium(self, name: str, properties: tuple[str, ...], at: dict[str, Any]) -> dict[str, str]:
         """Names of the values of the properties that an element uses; computed ones have none."""
@@ -254,9 +276,9 @@ class Parts:
                 self._computed_property(name, prop, stated, entry, at)
         # what no element computes with may still bound its validity (the speed of sound in a line)
         entry["stated"] = {
-            prop: self.source.quantity(stated[prop], PROPERTY_UNITS[prop], table=f"medium.{name}", key=prop)
+            prop: self._property(f"medium.{name}", prop, stated[prop])
             for prop in ("density", "viscosity", "bulk_modulus")
-            if prop in stated and not self._is_shared(stated[prop])
+            if prop in stated
         }
         return found
 
@@ -267,10 +289,9 @@ class Parts:
             shared = self._shared(
                 written.strip()[1:].strip(), PROPERTY_UNITS[prop], prop, True, {"table": table, "name": ""}
             )
-            self.keep(f"{name}.{prop}", self.values[shared], name, prop)
+            self.media[name].setdefault("shared", {})[prop] = shared
             return shared
-        found = self.source.quantity(written, PROPERTY_UNITS[prop], table=table, key=prop)
-        return self.keep(f"{name}.{prop}", found, name, prop)
+        return self.keep(f"{name}.{prop}", self._property(table, prop, written), name, prop)
 
     def _computed_property(
         self, name: str, prop: str, stated: Mapping[str, Any], entry: dict[str, Any], at: dict[str, Any]
@@ -289,8 +310,7 @@ class Parts:
         needs_temperature = not (prop == "bulk_modulus" and builtin in GASES)
         if needs_temperature:
             if "temperature" in stated:
-                found = self.source.quantity(stated["temperature"], "K", table=table, key="temperature")
-                entry["temperature"] = self.keep(f"{name}.temperature", found, name, "temperature")
+                entry["temperature"] = self._stated_property(name, "temperature", stated["temperature"])
             elif "rig.temperature" in self.values:
                 entry["temperature"] = "rig.temperature"
             else:

@@ -6,15 +6,16 @@ Every fault names the file, the line, the table and the key, and says what to do
 from __future__ import annotations
 
 import re
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
-from rigtally.physics.rig import GROUND, Drive, Port, Reading, Rig
+from rigtally.physics.kinds import DOMAIN_OF, KINDS, SAME
+from rigtally.physics.rig import GROUND, Drive, Element, Port, Reading, Rig
 from rigtally.physics.rig_elements import Parts
 from rigtally.physics.rig_nodes import check_nodes
 from rigtally.physics.rig_options import read_agreement, read_fit, read_limits, read_log, read_systematic
-from rigtally.physics.rig_source import Source
+from rigtally.physics.rig_source import Source, nearest
 from rigtally.physics.spoken import WORDS
 from rigtally.quantities.uncertain import Uncertain
 
@@ -57,17 +58,20 @@ def load_rig(path: str | Path) -> Rig:
     source = Source(path)
     for name in source.tree:
         if name not in _TABLES:
-            source.only_keys({name: None}, _TABLES, table=name)
+            raise source.fault(
+                f"a table {name!r} is not known", table=name, do=nearest(name, list(_TABLES)),
+                code="unknown-table",
+            )  # fmt: skip
     settings = _settings(source)
     parts = Parts(source, settings)
     elements = parts.elements()
     drives = _drives(source, parts)
-    readings = _readings(source, parts, {e.name for e in elements} | {d.name for d in drives})
+    readings = _readings(source, parts, elements, drives)
     limits = read_limits(source)
     _check_whole(source, elements, drives, readings, limits)
     check_nodes(source, elements, drives, readings)
     return Rig(
-        title=str(source.tree.get("rig", {}).get("title", Path(path).stem)),
+        title=source.text_of(source.tree.get("rig", {}), "title", table="rig", need=False) or Path(path).stem,
         elements=elements,
         drives=drives,
         readings=readings,
@@ -204,7 +208,10 @@ def _drives(source: Source, parts: Parts) -> tuple[Drive, ...]:
     return tuple(out)
 
 
-def _readings(source: Source, parts: Parts, names: set[str]) -> tuple[Reading, ...]:
+def _readings(
+    source: Source, parts: Parts, elements: Sequence[Element], drives: Sequence[Drive]
+) -> tuple[Reading, ...]:
+    flows = _flows(elements, drives)
     out: list[Reading] = []
     for number, entry in enumerate(_entries(source, "reading")):
         at: dict[str, Any] = {"table": "reading", "number": number}
@@ -223,7 +230,8 @@ def _readings(source: Source, parts: Parts, names: set[str]) -> tuple[Reading, .
         unit = WORDS[word].unit
         if not WORDS[word].across:
             through = source.text_of(entry, "through", **at)
-            source.one_of(through, sorted(names), key="through", code="unknown-element", **at)
+            source.one_of(through, sorted(flows), key="through", code="unknown-element", **at)
+            _check_through(source, through, word, flows[through], at)
             out.append(Reading(name, word, None, through, channel, "", unit, line))
             continue
         if "through" in entry:
@@ -235,6 +243,32 @@ def _readings(source: Source, parts: Parts, names: set[str]) -> tuple[Reading, .
         medium = _level_medium(source, parts, entry, word, at)
         out.append(Reading(name, word, port, "", channel, medium, unit, line))
     return tuple(out)
+
+
+def _flows(elements: Sequence[Element], drives: Sequence[Drive]) -> dict[str, list[str]]:
+    """What can be read through: the domains of the elements (at a coupler's primary) and drives of a name."""
+    out: dict[str, list[str]] = {}
+    for element in elements:
+        out.setdefault(element.name, []).append(KINDS[element.kind].domains[0])
+    for drive in drives:
+        out.setdefault(drive.name, []).append(DOMAIN_OF[drive.imposes])
+    return out
+
+
+def _check_through(
+    source: Source, through: str, word: str, domains: Sequence[str], at: dict[str, Any]
+) -> None:
+    if len(domains) > 1:
+        raise source.fault(
+            f"through = {through!r} is the name of an element and of a drive", key="through",
+            do="give one of them another name", code="doubled-name", **at,
+        )  # fmt: skip
+    if domains[0] not in (DOMAIN_OF[word], SAME):
+        raise source.fault(
+            f"no {word} goes through {through!r}, which is {domains[0]}", key="of",
+            do="read " + " or ".join(w for w, s in WORDS.items() if not s.across and DOMAIN_OF[w] == domains[0]),
+            code="two-domains", **at,
+        )  # fmt: skip
 
 
 def _level_medium(
@@ -257,9 +291,8 @@ def _check_whole(source: Source, elements: Any, drives: Any, readings: Any, limi
         return
     for table, found in (("element", elements), ("drive", drives), ("reading", readings)):
         if not found:
-            raise source.fault(
+            raise source.whole(
                 f"the rig has no [[{table}]]",
-                table=table,
                 do="add one; `rigtally starter` shows how (a file with [limits] alone confirms a rating)",
                 code=f"no-{table}",
             )

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Sequence
+from collections.abc import Callable, Mapping, Sequence
 
 from rigtally.physics.kinds import DOMAIN_OF, KINDS, SAME
 from rigtally.physics.rig import GROUND, Drive, Element, Reading
@@ -22,27 +22,28 @@ def check_nodes(
     """
     domain: dict[str, tuple[str, str]] = {}
 
-    def claim(node: str, of: str, who: str, table: str, number: int, name: str) -> None:
+    def claim(node: str, of: str, who: str, table: str, number: int, name: str, key: str) -> None:
         if node == GROUND:
             return
         before = domain.setdefault(node, (of, who))
         if before[0] != of:
             raise source.fault(
                 f"node {node!r} is {of} here, but {before[0]} at {before[1]}",
-                table=table, number=number, name=name,
+                table=table, number=number, name=name, key=key,
                 do="a node belongs to one domain; join domains by a coupler", code="two-domains",
             )  # fmt: skip
 
-    waiting = []
+    waiting: list[tuple[int, Element]] = []
     for number, element in enumerate(elements):
         kind = KINDS[element.kind]
-        for port, of in zip(element.ports, kind.domains, strict=True):
+        if SAME in kind.domains:
+            waiting.append((number, element))
+            continue
+        for place, (port, of) in enumerate(zip(element.ports, kind.domains, strict=True)):
             for node in (port.first, port.second):
-                if of == SAME:
-                    waiting.append((number, element))
-                else:
-                    claim(node, of, repr(element.name), "element", number, element.name)
-    _follow_couplers(waiting, domain, claim)
+                key = _key(source, "element", number, place, node == port.second)
+                claim(node, of, repr(element.name), "element", number, element.name, key)
+    _follow_couplers(source, waiting, domain, claim)
     touched = Counter(
         node for e in elements for node in {n for port in e.ports for n in (port.first, port.second)}
     )
@@ -55,17 +56,20 @@ def check_nodes(
             if node != GROUND and node not in touched:
                 raise source.fault(
                     f"no element touches node {node!r}",
-                    table=table, number=number, name=name, key="at" if node == port.first else "to",
+                    table=table, number=number, name=name,
+                    key=_key(source, table, number, 0, node == port.second),
                     do=nearest(node, sorted(set(touched) - {GROUND})), code="unknown-node",
                 )  # fmt: skip
-            claim(node, DOMAIN_OF[word], f"{table} {name!r}", table, number, name)
+            said = "imposes" if table == "drive" else "of"
+            claim(node, DOMAIN_OF[word], f"{table} {name!r}", table, number, name, said)
     ends = Counter(touched)
     for table, _, _, _, port in places:
         if table == "drive" and port is not None:
             ends.update({port.first, port.second} - {GROUND})
     for number, element in enumerate(elements):
-        for port in element.ports:
-            for key, node in (("from", port.first), ("to", port.second)):
+        for place, port in enumerate(element.ports):
+            for node in (port.first, port.second):
+                key = _key(source, "element", number, place, node == port.second)
                 if node == GROUND or ends[node] > 1:
                     continue
                 read = any(r.port is not None and node in (r.port.first, r.port.second) for r in readings)
@@ -77,12 +81,30 @@ def check_nodes(
                     )  # fmt: skip
 
 
-def _follow_couplers(waiting: list, domain: dict, claim: object) -> None:  # type: ignore[type-arg]
+def _key(source: Source, table: str, number: int, place: int, second: bool) -> str:
+    """The key under which a node is written: at, from or to, or the port of a coupler."""
+    written = source.tree[table][number]
+    if "primary" in written or "secondary" in written:
+        return ("primary", "secondary")[place]
+    return "at" if "at" in written else ("to" if second else "from")
+
+
+def _follow_couplers(
+    source: Source,
+    waiting: Sequence[tuple[int, Element]],
+    domain: Mapping[str, tuple[str, str]],
+    claim: Callable[[str, str, str, str, int, str, str], None],
+) -> None:
     """Couplers of one domain, whichever it is, take it from their neighbours."""
     for _ in range(len(waiting)):
         for number, element in waiting:
-            nodes = [n for port in element.ports for n in (port.first, port.second) if n != GROUND]
-            known = {domain[n][0] for n in nodes if n in domain}
-            for of in known:
-                for node in nodes:
-                    claim(node, of, repr(element.name), "element", number, element.name)  # type: ignore[operator]
+            places = [
+                (node, _key(source, "element", number, place, node == port.second))
+                for place, port in enumerate(element.ports)
+                for node in (port.first, port.second)
+                if node != GROUND
+            ]
+            known = {domain[node][0] for node, _ in places if node in domain}
+            for of in sorted(known):
+                for node, key in places:
+                    claim(node, of, repr(element.name), "element", number, element.name, key)

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+import math
 import re
 from collections.abc import Mapping
 from typing import Any
 
 from rigtally.errors import UsageError
-from rigtally.physics.rig_source import Source
+from rigtally.physics.rig_source import Source, nearest
 from rigtally.quantities import units
 from rigtally.quantities.tolerance import read_quantity
 from rigtally.quantities.uncertain import Uncertain
@@ -24,7 +25,10 @@ _UNIT = {
 }
 _RANGE = re.compile(r"^(.+?)\s+to\s+(.+)$")
 _ABOVE = re.compile(r"^(>=|<=|≥|≤)\s*(.+)$")
-_WITHIN = re.compile(r"^(.+?)\s+within\s+([\d.eE+-]+)\s*%$")
+_NUMBER = r"(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?"
+_WITHIN = re.compile(rf"^(.+?)\s+within\s+({_NUMBER})\s*%$")
+_PERCENT = re.compile(rf"^\s*({_NUMBER})\s*%\s*$")
+_LEADING = re.compile(rf"^\s*[+-]?{_NUMBER}\s*")
 
 
 def _table(source: Source, name: str) -> Mapping[str, Any]:
@@ -38,16 +42,23 @@ def read_log(source: Source) -> dict[str, Any]:
     """time, rate, units and skew of the log."""
     entry = _table(source, "log")
     source.only_keys(entry, ("time", "rate", "units", "skew"), table="log")
-    out: dict[str, Any] = {key: entry[key] for key in ("time", "rate") if key in entry}
+    out: dict[str, Any] = {}
+    if "time" in entry:
+        out["time"] = source.text_of(entry, "time", table="log")
+    if "rate" in entry:
+        source.quantity(entry["rate"], "Hz", table="log", key="rate")
+        out["rate"] = entry["rate"]
     stated = entry.get("units", {})
     if not isinstance(stated, dict):
         raise source.fault("units is not a table", table="log", key="units", do='write units = { p = "kPa" }',
                            code="bad-table")  # fmt: skip
-    for word in stated.values():
+    for channel, word in stated.items():
         try:
             units.unit(str(word))
         except UsageError as fault:
-            raise source.fault(fault.what, table="log", key="units", do=fault.do, code=fault.code) from None
+            raise source.fault(
+                fault.what, table="log", key=f"units.{channel}", do=fault.do, code=fault.code
+            ) from None
     if stated:
         out["units"] = {str(k): str(v) for k, v in stated.items()}
     skew = entry.get("skew", {})
@@ -56,7 +67,8 @@ def read_log(source: Source) -> dict[str, Any]:
                            code="bad-table")  # fmt: skip
     if skew:
         out["skew"] = {
-            str(k): source.quantity(v, "s", table="log", key="skew", positive=False) for k, v in skew.items()
+            str(k): source.quantity(v, "s", table="log", key=f"skew.{k}", positive=False)
+            for k, v in skew.items()
         }
     return out
 
@@ -102,11 +114,11 @@ def read_agreement(source: Source) -> dict[str, Any]:
         raise source.fault("within is not a table", table="agreement", key="within",
                            do='write within = { gain = "2 %" }', code="bad-table")  # fmt: skip
     for name, text in within.items():
-        _known(source, name, "agreement", "within")
-        found = re.match(r"^\s*([\d.eE+-]+)\s*%\s*$", str(text))
-        if not found or not float(found.group(1)) > 0:
+        _known(source, name, "agreement", f"within.{name}")
+        found = _PERCENT.match(str(text))
+        if not found or not 0 < float(found.group(1)) < math.inf:
             raise source.fault(
-                f"within {name} = {text!r} is not a percentage", table="agreement", key="within",
+                f"within {name} = {text!r} is not a percentage", table="agreement", key=f"within.{name}",
                 do=f'write {name} = "5 %"', code="bad-value",
             )  # fmt: skip
         out.setdefault("within", {})[name] = float(found.group(1)) / 100.0
@@ -122,7 +134,7 @@ def _known(source: Source, name: str, table: str, key: str) -> None:
     if not _PARAMETER.match(name):
         raise source.fault(
             f"{name!r} is not a parameter", table=table, key=key,
-            do="choose one of: gain, natural_frequency, damping_ratio, time_constant, zero_time, dead_time",
+            do=nearest(name, ["gain", *_UNIT]),
             code="unknown-parameter",
         )  # fmt: skip
 
@@ -142,7 +154,7 @@ def read_limits(source: Source) -> dict[str, tuple[float | None, float | None, s
 
 def _limit(text: str, base: str) -> tuple[float | None, float | None, str]:
     """One limit: ">= 120 Hz", "0.6 to 0.8", "2.00 mV/kPa within 1 %"."""
-    one_sided, between, within = _ABOVE.match(text), _RANGE.match(text), _WITHIN.match(text)
+    one_sided, within, between = _ABOVE.match(text), _WITHIN.match(text), _RANGE.match(text)
     if one_sided:
         value = _plain(one_sided.group(2), base)
         unit = value.unit
@@ -153,9 +165,14 @@ def _limit(text: str, base: str) -> tuple[float | None, float | None, str]:
         return value.value - half, value.value + half, value.unit
     if between:
         high = _plain(between.group(2), base)
-        word = re.sub(r"^[\s\d.eE+-]+", "", between.group(2)).strip()
         first = between.group(1).strip()
-        low = _plain(first if re.search(r"[A-Za-zµ°Ω]", first.replace("e", "")) else f"{first} {word}", base)
+        if not _word(first):
+            first = f"{first} {_word(between.group(2))}"
+        low = _plain(first, base)
+        if low.unit != high.unit:
+            raise UsageError(
+                f"{text!r} has limits of two kinds", do="write both in one unit", code="wrong-unit"
+            )
         if not low.value < high.value:
             raise UsageError(f"{text!r} runs downwards", do="write the lower limit first", code="bad-value")
         return low.value, high.value, high.unit
@@ -165,28 +182,38 @@ def _limit(text: str, base: str) -> tuple[float | None, float | None, str]:
     )  # fmt: skip
 
 
+def _word(text: str) -> str:
+    """The unit of a written number."""
+    return _LEADING.sub("", text).strip()
+
+
 def _plain(text: str, base: str) -> Uncertain:
     """A number with its unit; a frequency in Hz is turned into rad/s."""
     if base == "gain":
-        found = re.match(r"^\s*([+-]?[\d.]+(?:[eE][+-]?\d+)?)\s*(.*)$", text)
+        found = _LEADING.match(text)
         if not found:
             raise UsageError(f"{text!r} is not a value", do='write "2.00 mV/kPa"', code="bad-value")
-        unit = units.unit(found.group(2))
-        return Uncertain(float(found.group(1)) * unit.factor, 0.0, unit.si)
-    if base == "natural_frequency":
-        word = re.sub(r"^[\s\d.eE+-]+", "", text).strip()
-        if word in ("Hz", "kHz", "mHz", "MHz"):
-            value = read_quantity(text, "Hz", key=base)
-            return Uncertain(2.0 * 3.141592653589793 * value.value, 0.0, "rad/s")
-        return read_quantity(text, "rad/s", key=base)
-    return read_quantity(text, _UNIT[base], key=base)
+        unit = units.unit(_word(text))
+        value = Uncertain(float(found.group()) * unit.factor, 0.0, unit.si)
+    elif base == "natural_frequency" and re.search(r"Hz|hertz", _word(text)):
+        turns = read_quantity(text, "Hz", key=base)
+        value = Uncertain(2.0 * math.pi * turns.value, turns.u, "rad/s")
+    else:
+        value = read_quantity(text, _UNIT[base], key=base)
+    if not math.isfinite(value.value):
+        raise UsageError(f"{text!r} is not finite", do="write a finite limit", code="bad-value")
+    if value.u > 0.0:
+        raise UsageError(
+            f"{text!r} states an uncertainty", do="a limit has none; write the limit alone", code="bad-value"
+        )
+    return value
 
 
 def read_systematic(source: Source) -> tuple[dict[str, Any], ...]:
     """Type B contributions, relative on a gain or on time."""
     entries = source.tree.get("systematic", [])
-    if not isinstance(entries, list):
-        raise source.fault("systematic is no list of tables", table="systematic", do="write [[systematic]]",
+    if not isinstance(entries, list) or not all(isinstance(entry, dict) for entry in entries):
+        raise source.fault("systematic is not a list of tables", table="systematic", do="write [[systematic]]",
                            code="bad-table")  # fmt: skip
     out = []
     for number, entry in enumerate(entries):

@@ -50,6 +50,7 @@ class Source:
         try:
             self.text = data.decode("utf-8-sig")
             self.tree: dict[str, Any] = tomllib.loads(self.text)
+            self.lines: Lines = find_lines(self.text)
         except UnicodeDecodeError as fault:
             line = data[: fault.start].count(b"\n") + 1
             raise RigError(
@@ -58,9 +59,18 @@ class Source:
                 do="save it as UTF-8",
                 code="not-text",
             ) from None
-        except (tomllib.TOMLDecodeError, RecursionError) as fault:
+        except tomllib.TOMLDecodeError as fault:
             raise self._syntax(str(fault)) from None
-        self.lines: Lines = find_lines(self.text)
+        except (RecursionError, ValueError) as fault:
+            raise RigError(
+                "the file cannot be read as TOML: "
+                + (
+                    "nested too deep" if isinstance(fault, RecursionError) else "a number has too many digits"
+                ),
+                where=self.file,
+                do="write it as `rigtally starter` shows",
+                code="not-toml",
+            ) from None
 
     def _syntax(self, message: str) -> RigError:
         found = re.search(r"\(at line (\d+)", message)
@@ -90,6 +100,10 @@ class Source:
         if self._is_list(table) and not name:
             shown = f"[[{table}]] number {number + 1}"
         return RigError(what, where=f"{self.file}:{line}: {shown}", do=do, code=code)
+
+    def whole(self, what: str, *, do: str, code: str) -> RigError:
+        """A refusal of the file as a whole."""
+        return RigError(what, where=self.file, do=do, code=code)
 
     def _is_list(self, table: str) -> bool:
         return isinstance(self.tree.get(table), list)

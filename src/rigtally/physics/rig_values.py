@@ -146,8 +146,9 @@ class RigValues:
             if key == "gravity":
                 return self._gravity(named)
             medium = element.medium if element is not None else ""
-            if f"{medium}.{key}" in self.rig.values:
-                return self._named(named, f"{medium}.{key}")
+            stated = self.rig.media.get(medium, {}).get("shared", {}).get(key, f"{medium}.{key}")
+            if stated in self.rig.values:
+                return self._named(named, stated)
             return self._property(medium, key, named)
 
         return get

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 import re
+import tomllib
 from collections.abc import Mapping
 from pathlib import Path
 
@@ -28,9 +29,9 @@ def save_rig(rig: Rig, new_values: Mapping[str, Uncertain], path: str | Path) ->
     new_values : value name ("gauge chamber.compliance") -> Uncertain, SI
     path : the file to write; replaced at once or not at all
     """
-    lines = rig.text.splitlines(keepends=True)
-    where = find_lines(rig.text)
+    text, where = rig.text, find_lines(rig.text)
     places = {element.name: number for number, element in enumerate(rig.elements)}
+    found: list[tuple[int, int, str]] = []
     for name, value in new_values.items():
         if name not in rig.labels or not math.isfinite(value.value):
             continue
@@ -41,24 +42,19 @@ def save_rig(rig: Rig, new_values: Mapping[str, Uncertain], path: str | Path) ->
             (f"value.{name}", 0, "value"),
             ("rig", 0, key if owner == "rig" else ""),
         ):
-            line = where.keys.get((table, number, word))
-            if line is not None:
-                lines[line - 1] = _replaced(lines[line - 1], word, value)
+            span = where.values.get((table, number, word))
+            if span is not None:
+                begin, end = span
+                found.append((begin, end, f'"{_text(value, _read(text[begin:end]))}"'))
                 break
-    return write_whole(path, "".join(lines))
+    for begin, end, written in sorted(found, reverse=True):
+        text = text[:begin] + written + text[end:]
+    return write_whole(path, text)
 
 
-def _replaced(line: str, key: str, value: Uncertain) -> str:
-    """The line with the quoted (or bare) value of its key replaced."""
-    quoted = re.compile(rf'^(\s*(?:"{key}"|{key})\s*=\s*)"([^"]*)"(.*)$', re.S)
-    found = quoted.match(line)
-    if found is None:
-        bare = re.match(rf"^(\s*{key}\s*=\s*)([^#\s]+)(.*)$", line, re.S)
-        return f'{bare.group(1)}"{_text(value, "")}"{bare.group(3)}' if bare else line
-    written = found.group(2)
-    if written.strip().startswith("="):
-        return line
-    return f'{found.group(1)}"{_text(value, written)}"{found.group(3)}'
+def _read(written: str) -> str:
+    """The text of a TOML value, a string or a bare number."""
+    return str(tomllib.loads(f"value = {written}")["value"])
 
 
 def _text(value: Uncertain, written: str) -> str:

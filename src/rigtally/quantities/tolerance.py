@@ -45,7 +45,7 @@ def read_quantity(
     if not isinstance(text, str):
         if expected:
             raise UsageError(f"{key} = {text} has no unit", do=_example(key, expected), code="no-unit")
-        out = Uncertain(float(text), 0.0, "", distribution="exact")
+        out = Uncertain(_finite(text), 0.0, "", distribution="exact")
         _check(out, positive, key, str(text))
         return out
     parts = [part.strip() for part in text.split(",")]
@@ -65,12 +65,10 @@ def read_quantity(
     half_number, half_word = _amount(half_text, key, text, expected) if half_text else (0.0, "")
     if not word and half_word and half_word != "%":
         word = half_word
+    if not word and expected:
+        raise UsageError(f"{key} = {text!r} has no unit", do=_example(key, expected), code="no-unit")
     size = _unit_of(word, expected, key)
     value = number * size.factor + size.offset
-    if not math.isfinite(value):
-        raise UsageError(
-            f"{key} = {text!r} is not a finite value", do=_example(key, expected), code="bad-value"
-        )
     if half_text:
         if len(parts) > 1:
             raise UsageError(
@@ -134,6 +132,11 @@ def _amount(text: str, key: str, whole: str, expected: str) -> tuple[float, str]
 def _size(number: float, word: str, value: float, size: Unit, expected: str, key: str) -> float:
     """A tolerance in SI: a percentage of the value's magnitude, its own unit, or the value's."""
     if word == "%":
+        if size.offset:
+            raise UsageError(
+                f"{key}: a percentage of {size.written} has no meaning", do='write "23 °C ± 1 K"',
+                code="bad-tolerance",
+            )  # fmt: skip
         return number / 100.0 * (abs(value) if value != 0.0 or expected else 1.0)
     if not word:
         return number * size.factor
@@ -144,8 +147,6 @@ def _size(number: float, word: str, value: float, size: Unit, expected: str, key
 def _unit_of(word: str, expected: str, key: str) -> Unit:
     """The written unit, checked against the dimension that is needed."""
     if not word:
-        if expected:
-            raise UsageError(f"{key} has no unit", do=_example(key, expected), code="no-unit")
         return unit("")
     found = unit(word)
     if not same_dimension(found.si or "", expected):
@@ -160,7 +161,19 @@ def _si(expected: str) -> str:
     return unit(expected).si if expected else ""
 
 
+def _finite(number: float) -> float:
+    """The number as a float, infinite where a whole number is too large for one."""
+    try:
+        return float(number)
+    except OverflowError:
+        return math.inf
+
+
 def _check(found: Uncertain, positive: bool, key: str, text: str) -> None:
+    if not (math.isfinite(found.value) and math.isfinite(found.u)):
+        raise UsageError(
+            f"{key} = {text!r} is not finite", do="write a number that a float can hold", code="bad-value"
+        )
     if not positive:
         return
     if found.value <= 0.0:
