@@ -24,7 +24,6 @@ FLOOR = {
     "rating": 3,
     "planning": 3,
     "reporting": 4,
-    "campaign": 4,
     "cli": 5,
 }
 # library: the rooms (or modules) that may import it

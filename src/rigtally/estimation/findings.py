@@ -65,12 +65,13 @@ def correlation_with_input(residual: Array, inputs: Array, later: bool) -> float
                 moved[lag:] = row[:-lag]
             columns.append(moved - moved.mean())
     table = np.array(columns).T
-    u, s, _ = np.linalg.svd(table, full_matrices=False)
-    rank = int(np.sum(s > 1e-3 * max(float(s[0]), 1e-300)))
+    power, turn = np.linalg.eigh(table.T @ table)
+    kept = power > 1e-6 * max(float(power[-1]), 1e-300)
+    rank = int(np.sum(kept))
     if rank == 0 or n - rank < 20:
         return 1.0
     white = white - white.mean()
-    part = u[:, :rank].T @ white
+    part = (turn[:, kept].T @ (table.T @ white)) / np.sqrt(power[kept])
     explained, total = float(part @ part), float(white @ white)
     if total <= 0:
         return 1.0
@@ -156,7 +157,7 @@ def between_findings(trial: Trial, result: RoadResult, other: RoadResult, word: 
                 moved.append(f"{name} by {steps:+.1f} u")
     if not moved:
         return []
-    better = " and fits better" if other.cost < result.cost - 4.0 else ""
+    better = " and fits better" if _likelier(trial, result, other) else ""
     return [
         Warning_(
             "between-assumption",
@@ -164,3 +165,18 @@ def between_findings(trial: Trial, result: RoadResult, other: RoadResult, word: 
             f"{better}",
         )
     ]
+
+
+def _likelier(trial: Trial, result: RoadResult, other: RoadResult) -> bool:
+    """Whether the other fit leaves clearly less over: its log-likelihood (white residuals) is higher by 2."""
+    gain = 0.0
+    for i in range(len(trial.form.outputs)):
+        sums, count = [], 0
+        for found in (result, other):
+            rests = [s.outputs[i] - f[i] for s, f in zip(trial.segments, found.fitted, strict=True)]
+            rest = np.concatenate([r[np.isfinite(r)] for r in rests])
+            sums.append(float(rest @ rest))
+            count = rest.size
+        if min(sums) > 0:
+            gain += 0.5 * count * math.log(sums[0] / sums[1])
+    return gain > 2.0

@@ -26,7 +26,7 @@ _ROADS = {
     "time": ("rigtally.estimation.time_domain", "fit_time"),
     "frequency": ("rigtally.estimation.frequency_domain", "fit_frequency"),
 }
-LONG = 50_000  # samples beyond which the time road checks from where the frequency road ended
+LONG = 5_000  # samples beyond which the time road checks from where the frequency road ended
 _OTHER = {"time": "frequency", "frequency": "time"}
 
 
@@ -246,8 +246,11 @@ def _other_assumption(trial: Trial, result: RoadResult, road: str) -> list[Warni
     word = "held" if trial.between == "ramped" else "ramped"
     if not np.all(np.isfinite(result.theta)):
         return []
+    long = sum(segment.count for segment in trial.segments) > LONG
+    otherwise = replace(trial, between=cast(Any, word))
     try:
-        other = _take(road, replace(trial, between=cast(Any, word)))
+        # a long record is followed from where the fit ended, by the road that takes a start
+        other = _take("time", otherwise, start=result.theta) if long else _take(road, otherwise)
     except FitError:
         return []
     return between_findings(trial, result, other, word)

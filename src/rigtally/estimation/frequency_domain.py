@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from rigtally.errors import FitError
 from rigtally.estimation.frequency_columns import Problem
+from rigtally.estimation.frequency_covariance import covariance_of
 from rigtally.estimation.frequency_noise import Colour, autoregression, mains_lines
 from rigtally.estimation.frequency_projection import Projection, all_columns, project_given
 from rigtally.estimation.frequency_solve import Constrained, Descent, constrained, descend
@@ -353,7 +354,7 @@ def _result(
     else:
         variance = projection.cost / max(freedom, 1.0)
         dof = max(freedom, 1.0)
-    covariance = chain @ _covariance(sensitivity, variance) @ chain.T
+    covariance = chain @ covariance_of(sensitivity, variance) @ chain.T
     if not problem.slots:
         covariance[: form.numerator_count] = np.nan
         covariance[:, : form.numerator_count] = np.nan
@@ -389,22 +390,4 @@ def _release_sensitivity(problem: Problem, theta: Array, projection: Projection)
     first = problem.form.numerator_count
     out = np.zeros((projection.residual.size, theta.size))
     out[:, first:] = -project_given(problem, theta).sensitivity[:, first:]
-    return out
-
-
-def _covariance(sensitivity: Array, variance: float) -> Array:
-    """σ²(JᵀJ)⁻¹ by QR; infinite directions stay infinite (NaN in the parameters that they touch)."""
-    size = np.linalg.norm(sensitivity, axis=0)
-    if sensitivity.shape[1] == 0:
-        return np.zeros((0, 0))
-    bad = ~(size > 0)
-    safe = np.where(bad, 1.0, size)
-    _, singular, vt = np.linalg.svd(np.linalg.qr(sensitivity / safe, mode="r"))
-    dead = singular <= 1e-10 * singular[0]
-    inverse = np.where(dead, 0.0, 1.0 / np.where(dead, 1.0, singular))
-    half = vt.T * inverse
-    out: Array = variance * (half @ half.T) / np.outer(safe, safe)
-    lost = bad | (np.abs(vt[dead]) > 1e-3).any(axis=0)
-    out[lost] = np.nan
-    out[:, lost] = np.nan
     return out

@@ -87,6 +87,15 @@ def _spelled(text: str) -> str:
     return word.replace("^", "**")
 
 
+# what most logs are written in, exactly; everything else is read by pint (whose registry takes a while to build)
+_COMMON = {
+    "s": ("s", 1.0), "ms": ("s", 1e-3), "Hz": ("Hz", 1.0), "kHz": ("Hz", 1e3), "Pa": ("Pa", 1.0), "kPa": ("Pa", 1e3),
+    "MPa": ("Pa", 1e6), "bar": ("Pa", 1e5), "mbar": ("Pa", 1e2), "V": ("V", 1.0), "mV": ("V", 1e-3),
+    "A": ("A", 1.0), "mA": ("A", 1e-3), "N": ("N", 1.0), "kN": ("N", 1e3), "m": ("m", 1.0), "mm": ("m", 1e-3),
+    "rad/s": ("rad/s", 1.0), "m/s": ("m/s", 1.0),
+}  # fmt: skip
+
+
 @lru_cache(maxsize=512)
 def unit(text: str) -> Unit:
     """Read a unit such as "kPa", "mV/kPa", "m^3/s", "°C", "bar(g)".
@@ -99,6 +108,9 @@ def unit(text: str) -> Unit:
     written = text.strip()
     if written in ("", "-", "1"):
         return Unit(written, "", 1.0)
+    if written in _COMMON:
+        si, factor = _COMMON[written]
+        return Unit(written, si, factor)
     suffix = _PRESSURE_SUFFIX.match(written)
     reference = ""
     word = _spelled(written)
@@ -161,6 +173,8 @@ def dimension(text: str) -> str:
 
 def same_dimension(first: str, second: str) -> bool:
     """Whether two units measure the same kind of quantity."""
+    if unit(first).si == unit(second).si:
+        return True
     units = registry()
 
     def of(text: str) -> Any:
@@ -172,6 +186,8 @@ def same_dimension(first: str, second: str) -> bool:
 
 def ratio(numerator: str, denominator: str, power_of_time: int = 0) -> str:
     """The SI-coherent unit of output over input times seconds to a power, simplified."""
+    if numerator == denominator and not power_of_time:
+        return ""
     units = registry()
     over = units.Unit(_spelled(numerator) if numerator else "dimensionless") / units.Unit(
         _spelled(denominator) if denominator else "dimensionless"
