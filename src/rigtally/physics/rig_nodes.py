@@ -48,10 +48,8 @@ def check_nodes(
         node for e in elements for node in {n for port in e.ports for n in (port.first, port.second)}
     )
     places = [("drive", k, d.name, d.imposes, d.port) for k, d in enumerate(drives)]
-    places += [("reading", k, r.name, r.of, r.port) for k, r in enumerate(readings) if r.port is not None]
+    places += [("reading", k, r.name, r.of, r.port) for k, r in enumerate(readings) if r.port]
     for table, number, name, word, port in places:
-        if port is None:
-            continue
         for node in (port.first, port.second):
             if node != GROUND and node not in touched:
                 raise source.fault(
@@ -62,9 +60,10 @@ def check_nodes(
                 )  # fmt: skip
             said = "imposes" if table == "drive" else "of"
             claim(node, DOMAIN_OF[word], f"{table} {name!r}", table, number, name, said)
+    _check_levels(source, elements, drives, readings)
     ends = Counter(touched)
     for table, _, _, _, port in places:
-        if table == "drive" and port is not None:
+        if table == "drive":
             ends.update({port.first, port.second} - {GROUND})
     for number, element in enumerate(elements):
         for place, port in enumerate(element.ports):
@@ -79,6 +78,27 @@ def check_nodes(
                         table="element", number=number, name=element.name, key=key,
                         do=nearest(node, sorted(set(ends) - {GROUND, node})), code="loose-node",
                     )  # fmt: skip
+
+
+def _check_levels(
+    source: Source, elements: Sequence[Element], drives: Sequence[Drive], readings: Sequence[Reading]
+) -> None:
+    """A level is a pressure over ρ g: of the tank at its node, or of the medium that is named."""
+    tanks = {
+        node
+        for element in elements
+        if element.kind == "open-tank"
+        for node in (element.ports[0].first, element.ports[0].second)
+    }
+    places = [("drive", k, d.name, d.imposes, d.port, d.medium) for k, d in enumerate(drives)]
+    places += [("reading", k, r.name, r.of, r.port, r.medium) for k, r in enumerate(readings) if r.port]
+    for table, number, name, word, port, medium in places:
+        if word == "level" and not medium and port.first not in tanks:
+            raise source.fault(
+                f"no open tank stands at node {port.first!r}, and no medium is named",
+                table=table, number=number, name=name, key=_key(source, table, number, 0, False),
+                do='name the medium, for example medium = "water"', code="level-without-medium",
+            )  # fmt: skip
 
 
 def _key(source: Source, table: str, number: int, place: int, second: bool) -> str:

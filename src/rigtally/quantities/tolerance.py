@@ -41,12 +41,13 @@ def read_quantity(
         Codes "bad-value", "no-unit", "wrong-unit", "bad-tolerance", "not-positive".
     """
     if isinstance(text, bool) or not isinstance(text, str | float | int):
-        raise UsageError(f"{key} = {text!r} is not a value", do=_example(key, expected), code="bad-value")
+        shown = str(text).lower() if isinstance(text, bool) else str(text)
+        raise UsageError(f"{key} = {shown} is not a value", do=_example(key, expected), code="bad-value")
     if not isinstance(text, str):
         if expected:
             raise UsageError(f"{key} = {text} has no unit", do=_example(key, expected), code="no-unit")
         out = Uncertain(_finite(text), 0.0, "", distribution="exact")
-        _check(out, positive, key, str(text))
+        _check(out, positive, key, text)
         return out
     parts = [part.strip() for part in text.split(",")]
     for part in parts[1:]:
@@ -169,7 +170,7 @@ def _finite(number: float) -> float:
         return math.inf
 
 
-def _check(found: Uncertain, positive: bool, key: str, text: str) -> None:
+def _check(found: Uncertain, positive: bool, key: str, text: str | float) -> None:
     if not (math.isfinite(found.value) and math.isfinite(found.u)):
         raise UsageError(
             f"{key} = {text!r} is not finite", do="write a number that a float can hold", code="bad-value"
