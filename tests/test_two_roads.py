@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import ast
+import importlib
 import sys
 import types
 from pathlib import Path
@@ -70,6 +71,7 @@ def test_either_road_answers_alone(
     for name in ("fit_time", "fit_frequency", "profile"):
         setattr(stand_in, name, refuse)
     monkeypatch.setitem(sys.modules, f"rigtally.estimation.{broken}", stand_in)
+    importlib.import_module("rigtally.estimation.fit")
     package = sys.modules["rigtally.estimation"]
     monkeypatch.setattr(package, broken, stand_in, raising=False)
     for name, module in list(sys.modules.items()):
@@ -127,7 +129,6 @@ def test_the_roads_agree_on_every_sample(
 
 def test_no_answer_where_both_roads_are_closed(monkeypatch: pytest.MonkeyPatch) -> None:
     """No fit that could be trusted: exit code 4's exception, not a number."""
-    import importlib
 
     def refuse(*args: object, **keywords: object) -> object:
         raise FitError("this road is closed", code="no-convergence")

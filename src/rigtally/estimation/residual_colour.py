@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import solve_toeplitz
-from scipy.signal import lfilter
+
+from rigtally.quantities.fir import moving_sum
 
 Array = NDArray[np.float64]
 
@@ -31,4 +32,4 @@ def whiten(residual: Array, inputs: Array) -> tuple[Array, Array]:
         if score < best:
             best, chosen = score, np.concatenate([[1.0], a])
     centred = inputs - inputs.mean(axis=1, keepdims=True)
-    return np.asarray(lfilter(chosen, [1.0], r)), np.asarray(lfilter(chosen, [1.0], centred, axis=-1))
+    return moving_sum(chosen, r), moving_sum(chosen, centred)

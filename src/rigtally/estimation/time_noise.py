@@ -15,7 +15,8 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import cholesky, solve_triangular, toeplitz
-from scipy.signal import lfilter
+
+from rigtally.quantities.fir import moving_sum
 
 Array = NDArray[np.float64]
 MOST_ORDERS = 40
@@ -56,7 +57,7 @@ class Noise:
             if p == 0:
                 out[..., run] = piece / self.sigma
                 continue
-            white = lfilter(self.coefficients, [1.0], piece, axis=-1)
+            white = moving_sum(self.coefficients, piece)
             head = min(p, piece.shape[-1])
             low = self.start[:head, :head]
             white[..., :head] = solve_triangular(low, piece[..., :head].T, lower=True).T
