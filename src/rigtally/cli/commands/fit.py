@@ -18,8 +18,7 @@ from rigtally.cli.options import SEED_OPTION, fit_options, log_options, output_o
 def command(logs: tuple[str, ...], **options: Any) -> None:
     """Fit one form to one or more logs.
 
-    With --form any, list the forms that the log supports. Several logs are
-    repeats of one test and are fitted together.
+    Several logs are repeats of one test and are fitted together.
     """
     from rigtally.cli.logs import choose_channels, fit_keywords, read_logs, unlogged
     from rigtally.cli.output import emit
