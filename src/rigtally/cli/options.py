@@ -39,7 +39,9 @@ LOG_OPTIONS = (
 )
 
 FIT_OPTIONS = (
-    click.option("--form", metavar="NAME", help="Form to fit (second-order, first-order-rate, rational-1/3, …)."),
+    click.option(
+        "--form", metavar="NAME", help="Form to fit (second-order, first-order-rate, rational-1/3, …)."
+    ),
     click.option("--dead-time", is_flag=True, help="Fit a dead time too."),
     click.option(
         "--road",

@@ -35,7 +35,8 @@ class Gas:
     sutherland: float
 
 
-# molar masses (air: dry, with 0.04 % carbon dioxide), heat capacity ratios (20 °C, 1 bar), Sutherland constants: handbook values, from memory
+# molar masses (air: dry, with 0.04 % carbon dioxide), heat capacity ratios (20 °C, 1 bar), Sutherland constants:
+# handbook values, from memory
 GASES = {
     "air": Gas(0.0289655, 1.402, 1.716e-5, 273.15, 110.4),
     "nitrogen": Gas(0.0280134, 1.401, 1.663e-5, 273.15, 106.7),

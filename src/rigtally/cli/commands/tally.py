@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+from dataclasses import replace
 from typing import Any
 
 import click
@@ -52,6 +54,7 @@ def command(files: tuple[str, ...], **options: Any) -> int:
         **keywords,
     )
     result = tally(fitted, prediction, rig=rig, seed=options["seed"])
+    result = replace(result, warnings=(*result.warnings, *_limits_met(rig, prediction, fitted)))
     if options["save_rig"]:
         from rigtally.physics.write_back import save_rig
 
@@ -79,6 +82,17 @@ def _sort(files: tuple[str, ...]) -> tuple[str, list[str]]:
             code="command-line",
         )
     return rigs[0], logs
+
+
+def _limits_met(rig: Any, prediction: Any, fitted: Any) -> tuple[Any, ...]:
+    """Limits of the elements that the first log oversteps (Reynolds number, absolute pressure …)."""
+    from rigtally.physics.validity import check_validity
+
+    trace = fitted.traces[0]
+    if not math.isfinite(fitted.interval):
+        return ()
+    found = check_validity(rig, prediction, trace.inputs, fitted.interval, start=float(trace.time[0]))
+    return tuple(finding for finding in found if finding.code.endswith("-exceeded"))
 
 
 def _between(drives: Any) -> str:
