@@ -143,7 +143,9 @@ def test_values_are_si_with_their_owner(tmp_path: Path) -> None:
 
 def test_a_shared_value_is_one_input(tmp_path: Path) -> None:
     """A value, or a medium's property, that is used in several places is in the rig once."""
-    text = LINE.replace('"4.00 mm ± 0.05 mm"', '"= tube"', 1).replace('"871 kg/m^3 ± 0.5 %"', '"= rho"', 1)
+    text = LINE.replace('bore = "4.00 mm ± 0.05 mm"', 'bore = "= tube"').replace(
+        '"871 kg/m^3 ± 0.5 %"', '"= rho"', 1
+    )
     text = text.replace('of      = "pressure"', 'of      = "level"\nmedium  = "oil"')
     text += '\n[value.tube]\nvalue = "4.00 mm ± 0.05 mm"\n[value.rho]\nvalue = "871 kg/m^3 ± 0.5 %"\n'
     rig = read(text, tmp_path)
@@ -155,6 +157,15 @@ def test_a_shared_value_is_one_input(tmp_path: Path) -> None:
     for name, parameter in own.parameters.items():
         assert shared.parameters[name].value == pytest.approx(parameter.value, rel=1e-12)
         assert shared.parameters[name].u == pytest.approx(parameter.u, rel=1e-9)
+
+
+def test_a_shared_value_may_serve_a_level_alone(tmp_path: Path) -> None:
+    """A density that only a reading of level needs is used."""
+    text = LINE.replace('of      = "pressure"', 'of      = "level"\nmedium  = "brine"')
+    text += '[medium.brine]\ndensity = "= rho"\n[value.rho]\nvalue = "1030 kg/m^3 ± 1 %"\n'
+    gain = predict(read(text, tmp_path)).parameters["gain"]
+    assert gain.value == pytest.approx(1 / (1030 * 9.80665), rel=1e-12)
+    assert gain.u / gain.value == pytest.approx(0.01 / ROOT3, rel=1e-9)
 
 
 def test_settings_media_and_options(tmp_path: Path) -> None:
@@ -229,7 +240,8 @@ def test_every_spelling_of_toml_keeps_its_line(how: str, tmp_path: Path) -> None
 SIGNS = st.sampled_from(list("[]{}=\"'#.,±%-+0159eE \n\\\t\u00b5\u00e9\x00\x85\u2028"))
 WORDS = st.sampled_from(
     ["nan", "inf", "true", '"= x"', "1e400", "-1", "0", "mm", "ground", "at", "medium", '"', "[[element]]", "[rig]",
-     "[value.x]\nvalue = 1\n", "[limits]\ngain = 3\n", '"""', "within", " to ", "1979-05-27", "kg", "**9", "u = ", "k = 0"]
+     "[value.x]\nvalue = 1\n", "[limits]\ngain = 3\n", '"""', "within", " to ", "1979-05-27", "kg", "**9", "u = ",
+     "k = 0"]
 )  # fmt: skip
 
 
@@ -280,7 +292,7 @@ def values_swapped() -> list[str]:
                 '"%s{}"',
                 '"\\u0000"',
             ):
-                out.append("\n".join([*rows[:k], re.sub(r"=\s.*", f"= {other}", row), *rows[k + 1 :]]))
+                out.append("\n".join([*rows[:k], row.split(" = ")[0] + f" = {other}", *rows[k + 1 :]]))
     for table in (
         "rig",
         "medium",

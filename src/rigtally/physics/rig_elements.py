@@ -97,6 +97,10 @@ class Parts:
                 )  # fmt: skip
             names.add(name)
             out.append(self._element(entry, number, name))
+        return tuple(out)
+
+    def check_shared(self) -> None:
+        """Refuse a shared value that nothing has used; called when all is read."""
         for name in self.shared:
             if name not in self.used:
                 raise self.source.fault(
@@ -105,7 +109,6 @@ class Parts:
                     do=f'use it, as bore = "= {name}", or take the table out',
                     code="unused-value",
                 )
-        return tuple(out)
 
     def _element(self, entry: Mapping[str, Any], number: int, name: str) -> Element:
         at: dict[str, Any] = {"table": "element", "number": number, "name": name}

@@ -67,6 +67,7 @@ def load_rig(path: str | Path) -> Rig:
     elements = parts.elements()
     drives = _drives(source, parts)
     readings = _readings(source, parts, elements, drives)
+    parts.check_shared()
     limits = read_limits(source)
     _check_whole(source, elements, drives, readings, limits)
     check_nodes(source, elements, drives, readings)
