@@ -23,10 +23,11 @@ _SPELLINGS = {
     "μ": "u",
     "·": "*",
     "⋅": "*",
-    "²": "**2",
-    "³": "**3",
     "⁻¹": "**-1",
     "⁻²": "**-2",
+    "⁻³": "**-3",
+    "²": "**2",
+    "³": "**3",
     "%": "percent",
 }
 _PRESSURE_SUFFIX = re.compile(r"^(bar|mbar|psi|kPa|Pa|MPa)\s*\(?\s*([agd])\s*\)$|^(bar|mbar|psi)([agd])$")
@@ -48,9 +49,18 @@ _DIMENSION_WORDS = {
     "[length] / [time] ** 2": "an acceleration",
     "1 / [time]": "a frequency",
     "[current]": "a current",
-    "[mass] * [length] ** 2 / [current] / [time] ** 3": "a voltage",
+    "[mass] * [length] ** 2 / [time] ** 3 / [current]": "a voltage",
     "[mass] * [length] ** 2 / [time] ** 2": "a torque",
     "[mass] * [length] ** 2 / [time] ** 3": "a power",
+    "[mass] * [length] ** 2 / [time] ** 3 / [current] ** 2": "an electrical resistance",
+    "[current] ** 2 * [time] ** 4 / [mass] / [length] ** 2": "a capacitance",
+    "[mass] * [length] ** 2 / [time] ** 2 / [current] ** 2": "an inductance",
+    "[current] * [time]": "a charge",
+    "[mass] * [length] ** 2": "a moment of inertia",
+    "[mass] / [length] ** 4 / [time]": "a fluid resistance",
+    "[mass] / [length] ** 4": "a fluid inertance",
+    "[length] ** 4 * [time] ** 2 / [mass]": "a fluid compliance",
+    "[length] ** 2 / [time]": "a kinematic viscosity",
     "dimensionless": "a plain number",
 }
 
@@ -80,8 +90,13 @@ def registry() -> Any:
     return units
 
 
+_TORQUE = re.compile(r"\b([kmMµμu]?N)\s?m(s?)\b")  # Nm, kNm, Nms: newton metres, not a yarn's number
+_EXPONENT = re.compile(r"\*\*\s*\(?\s*[+-]?\d{1,2}(?:\.\d+)?\s*\)?(?![\d.])(?!\s*\*\*)")
+LONGEST = 80  # letters of a written unit
+
+
 def _spelled(text: str) -> str:
-    word = text.strip()
+    word = _TORQUE.sub(lambda m: f"{m.group(1)}*m*s" if m.group(2) else f"{m.group(1)}*m", text.strip())
     for sign, name in _SPELLINGS.items():
         word = word.replace(sign, name)
     return word.replace("^", "**")
@@ -119,6 +134,8 @@ def unit(text: str) -> Unit:
         reference = suffix.group(2) or suffix.group(4)
     units = registry()
     try:
+        if len(word) > LONGEST or len(_EXPONENT.findall(word)) != word.count("**"):
+            raise ValueError("no unit is written so")
         parsed = units.Unit(word)
         zero = units.Quantity(0.0, parsed).to_base_units()
         one = units.Quantity(1.0, parsed).to_base_units()
@@ -153,7 +170,20 @@ def si_text(text: str) -> str:
             return name
     if base.dimensionless:
         return "rad" if re.search(r"rad|deg|rev|turn|arcmin|°", text) else ""
-    return f"{base:~}".replace(" ** ", "^").replace(" / ", "/").replace(" * ", "*").replace(" ", "")
+    return _by_parts(units.Unit(_spelled(text)))
+
+
+def _by_parts(written: Any) -> str:
+    """Each part in its SI-coherent unit: "mV/kPa" is in "V/Pa"."""
+    units = registry()
+    parts = dict(written._units)
+    if len(parts) == 1 and set(parts.values()) == {1}:
+        base = units.Quantity(1.0, written).to_base_units().units
+        return f"{base:~C}".replace("**", "^")
+    out = units.Unit("dimensionless")
+    for name, power in parts.items():
+        out = out * units.Unit(_spelled(si_text(name)) or "dimensionless") ** power
+    return f"{out:~C}".replace("**", "^")
 
 
 _COHERENT = (
@@ -167,7 +197,7 @@ def dimension(text: str) -> str:
     units = registry()
     if text.strip() in ("", "-", "1"):
         return "a plain number"
-    found = units.Unit(_spelled(text)).dimensionality
+    found = units.Unit(_spelled(unit(text).si) or "dimensionless").dimensionality
     return _DIMENSION_WORDS.get(str(found), f"of dimension {found}")
 
 
@@ -201,7 +231,7 @@ def ratio(numerator: str, denominator: str, power_of_time: int = 0) -> str:
 
 def _near(written: str) -> str:
     known = [
-        "Pa", "kPa", "MPa", "bar", "mbar", "psi", "m", "mm", "um", "V", "mV", "A", "mA", "N", "kN", "rad/s",
+        "Pa", "kPa", "MPa", "bar", "mbar", "psi", "m", "mm", "um", "metre", "V", "mV", "A", "mA", "N", "kN", "rad/s",
         "rpm", "Hz", "kHz", "s", "ms", "us", "kg", "g", "degC", "K", "m/s", "m/s^2", "L/min",
     ]  # fmt: skip
     close = difflib.get_close_matches(written, known, n=1, cutoff=0.5)

@@ -3,30 +3,31 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from rich.console import Console
 from rich.markup import escape
 from rich.table import Table
 
-from rigtally.estimation.result import Fit
-from rigtally.physics.prediction_result import Prediction
-from rigtally.records.inspection import Inspection
-from rigtally.records.record import Record
 from rigtally.reporting.numbers import engineering, interval, percent, plain, quantity
 from rigtally.reporting.words import CAUTION, change, decided, spoken, verdict_sentence
-from rigtally.tallying.result import Tally
+
+if TYPE_CHECKING:
+    from rigtally.estimation.result import Fit
+    from rigtally.physics.prediction_result import Prediction
+    from rigtally.records.inspection import Inspection
+    from rigtally.tallying.result import Tally
 
 _COLOUR = {"agrees": "green", "differs": "red", "undecided": "yellow"}
 
 
 def render(result: Any, console: Console) -> None:
     """Print a result; what has no table of its own prints its `plain` text."""
-    for kind, show in _SHOWN:
-        if isinstance(result, kind):
-            show(result, console)
-            return
-    console.print(escape(str(result.plain)), soft_wrap=True)
+    show = _SHOWN.get(type(result).__name__)
+    if show is None:
+        console.print(escape(str(result.plain)), soft_wrap=True)
+    else:
+        show(result, console)
 
 
 def _table(title: str, *columns: str) -> Table:
@@ -135,6 +136,8 @@ def show_inspection(found: Inspection, console: Console) -> None:
     for line in record.provenance.how_read:
         console.print(escape(line), soft_wrap=True)
     console.print()
+    from rigtally.records.record import Record
+
     if isinstance(record, Record):
         document = found.to_dict()
         clock = document["clock"]
@@ -175,9 +178,10 @@ def show_inspection(found: Inspection, console: Console) -> None:
         console.print(f"  {escape(line)}", soft_wrap=True)
 
 
-_SHOWN: tuple[tuple[type, Callable[[Any, Console], None]], ...] = (
-    (Tally, show_tally),
-    (Fit, show_fit),
-    (Prediction, show_prediction),
-    (Inspection, show_inspection),
-)
+# by name: a fit on a terminal does not import the rooms of a tally
+_SHOWN: dict[str, Callable[[Any, Console], None]] = {
+    "Tally": show_tally,
+    "Fit": show_fit,
+    "Prediction": show_prediction,
+    "Inspection": show_inspection,
+}

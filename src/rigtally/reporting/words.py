@@ -4,10 +4,14 @@ from __future__ import annotations
 
 import math
 
+from typing import TYPE_CHECKING
+
 from rigtally.reporting.numbers import percent, plain, quantity
-from rigtally.tallying.decision import Decision
-from rigtally.tallying.explanation import Explanation
-from rigtally.tallying.result import Tally
+
+if TYPE_CHECKING:
+    from rigtally.tallying.decision import Decision
+    from rigtally.tallying.explanation import Explanation
+    from rigtally.tallying.result import Tally
 
 CAUTION = (
     "A result of this program does not replace a risk assessment. Rigs under pressure, with rotating parts or with "
