@@ -43,3 +43,23 @@ def test_the_reconciled_rig_is_saved(tmp_path: Path) -> None:
     assert run(["tally", str(log), str(rig), "--quiet", "--save-rig", str(out)]) == 0
     before = load_rig(rig).values["gauge chamber.compliance"].value
     assert load_rig(out).values["gauge chamber.compliance"].value > 1.3 * before
+
+
+@pytest.mark.parametrize("stated", ["2.0 bar ± 1 %, gauge", "3.0 bar, absolute, u = 0.01 bar"])
+def test_static_pressure_is_written_back_as_it_is_used(stated: str, tmp_path: Path) -> None:
+    """Gauge or absolute, the pressure that comes back is the one that was saved: no ambient pressure is added."""
+    old = tmp_path / "old.toml"
+    old.write_text(
+        f'[rig]\nstatic_pressure = "{stated}"\nambient_pressure = "1.0 bar ± 10 mbar"\ntemperature = "23 °C"\n'
+        '[medium.nitrogen]\n[[element]]\nname = "line"\nkind = "laminar-line"\nfrom = "a"\nto = "b"\n'
+        'bore = "4 mm"\nlength = "3 m"\nmedium = "nitrogen"\n[[element]]\nname = "pot"\nkind = "chamber"\n'
+        'at = "b"\nvolume = "20 cm^3"\nmedium = "nitrogen"\n[[drive]]\nname = "in"\nimposes = "pressure"\n'
+        'at = "a"\n[[reading]]\nname = "out"\nof = "pressure"\nat = "b"\n',
+        encoding="utf-8",
+    )
+    rig = load_rig(old)
+    assert rig.values["rig.static_pressure"].value == pytest.approx(3.0e5, rel=1e-12)
+    new_value = Uncertain(3.03e5, 900.0, "Pa")
+    new = load_rig(save_rig(rig, {"rig.static_pressure": new_value}, tmp_path / "new.toml"))
+    assert new.values["rig.static_pressure"].value == pytest.approx(3.03e5, rel=1e-9)
+    assert new.values["rig.static_pressure"].u == pytest.approx(900.0, rel=1e-3)

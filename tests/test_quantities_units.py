@@ -73,8 +73,10 @@ def test_no_text_stops_the_program(text: str) -> None:
 
 @pytest.mark.parametrize(
     "text, words",
-    [("mm", "a length"), ("V", "a voltage"), ("ohm", "an electrical resistance"), ("F", "a capacitance"), ("H", "an inductance"),
-     ("kPa", "a pressure"), ("Nm", "a torque"), ("N/m", "a stiffness"), ("L/min", "a volume flow"), ("kg*m^2", "a moment of inertia"),
+    [("mm", "a length"), ("V", "a voltage"),
+     ("ohm", "an electrical resistance"), ("F", "a capacitance"), ("H", "an inductance"),
+     ("kPa", "a pressure"), ("Nm", "a torque"), ("N/m", "a stiffness"), ("L/min", "a volume flow"),
+     ("kg*m^2", "a moment of inertia"),
      ("", "a plain number")],
 )  # fmt: skip
 def test_dimensions_in_words(text: str, words: str) -> None:

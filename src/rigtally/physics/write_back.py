@@ -21,7 +21,7 @@ def save_rig(rig: Rig, new_values: Mapping[str, Uncertain], path: str | Path) ->
     """Write the rig file with new values, each with its standard uncertainty in the unit that the file used.
 
     Comments and everything else stay. Values without a place of their own in the file (the friction model of a
-    line, say) are left out.
+    line, say) are left out. A static pressure that the file states as gauge is written as absolute.
 
     Parameters
     ----------
@@ -67,9 +67,9 @@ def _text(value: Uncertain, written: str) -> str:
         word = tail.group(1).strip() if tail else ""
     size = unit(word)
     number = repr((value.value - size.offset) / size.factor)
-    reference = re.search(r",\s*(absolute|gauge)", written)
     out = f"{number} {word}".strip()
     if math.isfinite(value.u) and value.u > 0:
         own = "K" if size.offset else word
         out += f", u = {value.u / (1.0 if size.offset else size.factor):.4g} {own}".rstrip()
-    return out + (f", {reference.group(1)}" if reference else "")
+    # a pressure is absolute inside: the ambient one is in it, and in its uncertainty
+    return out + (", absolute" if re.search(r",\s*(absolute|gauge)", written) else "")

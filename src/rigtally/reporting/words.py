@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-
 from typing import TYPE_CHECKING
 
 from rigtally.reporting.numbers import percent, plain, quantity
